@@ -1,0 +1,1 @@
+"""The command line: one module a command. It parses, calls one public function and prints."""

@@ -1,0 +1,1 @@
+"""TOML -> settings and material records, with every fault of a file at once."""

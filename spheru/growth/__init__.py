@@ -1,0 +1,1 @@
+"""Births -> label image: growth until impingement."""

@@ -1,0 +1,1 @@
+"""WHAT crystallises: growth and nucleation laws, dosage, material records."""

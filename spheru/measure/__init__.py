@@ -1,0 +1,1 @@
+"""Label image -> numbers, whatever its origin."""

@@ -1,0 +1,1 @@
+"""WHERE and WHEN crystals are born."""

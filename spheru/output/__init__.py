@@ -1,0 +1,1 @@
+"""Result -> files and figures."""

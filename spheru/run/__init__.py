@@ -1,0 +1,1 @@
+"""The whole chain: settings -> nuclei -> growth -> numbers. Read `spheru.run.grow` first."""

@@ -1,0 +1,1 @@
+"""HOW it cools: temperature over time, and the length grown by then."""
