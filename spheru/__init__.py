@@ -13,15 +13,47 @@ from __future__ import annotations
 
 import importlib
 import logging
-from typing import TYPE_CHECKING, Any, Final
+from typing import Any, Final
 
 __version__ = "0.1.0"
 
 _HOME: Final = {
     "Births": "spheru.births",
+    "CapacityError": "spheru.errors",
+    "ConfigError": "spheru.errors",
+    "Conversion": "spheru.run.result",
+    "DataError": "spheru.errors",
+    "Estimate": "spheru.run.estimate",
+    "Fault": "spheru.errors",
+    "FolderError": "spheru.errors",
     "Frame": "spheru.image.frame",
+    "InputFault": "spheru.errors",
     "LabelImage": "spheru.image.label_image",
+    "MaterialRecord": "spheru.material.record",
+    "MeltingError": "spheru.errors",
+    "MissingExtraError": "spheru.errors",
+    "NoCrystallisationError": "spheru.errors",
+    "Result": "spheru.run.result",
+    "RunError": "spheru.errors",
+    "Settings": "spheru.run.settings",
+    "Sizes": "spheru.measure.sizes",
     "SpheruError": "spheru.errors",
+    "Statistic": "spheru.measure.intervals",
+    "UnitError": "spheru.errors",
+    "UnknownNameError": "spheru.errors",
+    "ValidityError": "spheru.errors",
+    "estimate": "spheru.run.estimate",
+    "grow": "spheru.run.grow",
+    "measure_sizes": "spheru.measure.sizes",
+    "read_labels": "spheru.image.formats",
+    "read_record": "spheru.config.records",
+    "read_settings": "spheru.config.read",
+    "record_names": "spheru.config.records",
+    "save_run": "spheru.output.folder",
+    "settings_from_mapping": "spheru.config.read",
+    "settings_schema": "spheru.config.schema",
+    "tessellate": "spheru.growth.exact",
+    "write_labels": "spheru.image.formats",
 }
 
 __all__ = ["__version__", *_HOME]  # noqa: PLE0604 (all are strings)

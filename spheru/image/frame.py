@@ -160,13 +160,19 @@ class Frame:
         Returns
         -------
         inside : ndarray of bool, shape (n,)
-            Lower edges belong to the grid, upper ones do not.
+            Lower edges belong to the grid; upper ones do so at closed axes, where they are walls.
+
+        Examples
+        --------
+        >>> film = Frame(shape=(2, 4), pixel=1.0, closed=(True, False))
+        >>> film.holds(np.array([[2.0, 0.0], [0.0, 4.0]])).tolist()
+        [True, False]
         """
         points = position[:, -self.dimension :]
         low = np.asarray(self.origin)
-        inside: NDArray[np.bool_] = (
-            (points >= low) & (points < low + np.asarray(self.extent))
-        ).all(axis=1)
+        high = low + np.asarray(self.extent)
+        below = (points < high) | ((points == high) & np.asarray(self.closed))
+        inside: NDArray[np.bool_] = ((points >= low) & below).all(axis=1)
         return inside
 
     def crop(self, start: Sequence[int], shape: Sequence[int]) -> Frame:
