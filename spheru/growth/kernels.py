@@ -466,17 +466,36 @@ def _winner(
     z: float,
     y: float,
     x: float,
+    centre: F8,
+    near: F4,
     index: I4,
+    level: int,
     k: int,
+    squared: bool,
+    bound: Real,
     population: F8,
     row: I4,
     period: F8,
 ) -> tuple[float, int]:
-    """Find the owner of one pixel in float64: smallest value, then lowest row."""
+    """Find the owner of one pixel in float64: smallest value, then lowest row.
+
+    Only candidates whose value in float32 is below `bound` are looked at.
+    """
     best = np.inf
     label = 0
+    pz = np.float32(z - centre[0])
+    py = np.float32(y - centre[1])
+    px = np.float32(x - centre[2])
     for j in range(k):
-        i = index[j]
+        ez = pz - near[level, 0, j]
+        ey = py - near[level, 1, j]
+        ex = px - near[level, 2, j]
+        rough = ez * ez + ey * ey + ex * ex
+        if not squared:
+            rough = np.sqrt(rough) + near[level, 3, j]
+        if rough > bound:
+            continue
+        i = index[level, j]
         dz = abs(z - population[0, i])
         dy = abs(y - population[1, i])
         dx = abs(x - population[2, i])
@@ -543,6 +562,7 @@ def tessellate_kernel(
     arrival_out : ndarray of float32, shape (nz * ny * nx,)
         Grown length at arrival [m]; inf where the label is 0.
     """
+    none = np.float32(0.0)
     one, two, three, four = np.uint64(1), np.uint64(2), np.uint64(3), np.uint64(4)
     levels = blocks.shape[0]
     by, bx = (shape[1] - 1) // blocks[0, 1] + 1, (shape[2] - 1) // blocks[0, 2] + 1
@@ -743,7 +763,9 @@ def tessellate_kernel(
                             if second[p] - best[p] < close:
                                 time, winner = _winner(
                                     z0 + z + 0.5, y0 + y + 0.5, x0 + x + 0.5,
-                                    index[level + 1], k, population, row, period,
+                                    centre, near, index, level + 1, k, squared,
+                                    best[p] + close + close + (pp[p] if squared else none),
+                                    population, row, period,
                                 )  # fmt: skip
                                 if time > end:
                                     winner = 0

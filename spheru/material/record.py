@@ -262,27 +262,3 @@ class MaterialRecord:
             t_m_observed=self.t_m_observed + tm0_shift,
             growth=self.growth.shifted(tm0_shift, tg_shift),
         )
-
-    def refuse_counted_twice(self, *options: str) -> None:
-        """Refuse options that the site law of the record already contains.
-
-        Parameters
-        ----------
-        *options : {"melt memory", "induction"}
-            Options that are to act on top of the record's site law.
-
-        Raises
-        ------
-        ValidityError
-            If the data behind the site law contain one of them.
-        UnknownNameError
-            If an option is neither of the two.
-        """
-        for option in options:
-            if option not in SITE_OPTIONS:
-                raise UnknownNameError("effect on sites", option, SITE_OPTIONS)
-            if option in self.site_includes:
-                raise ValidityError(
-                    f"record {self.name}: expected no {option} on top of a site law fitted with "
-                    "it; leave the option out or give another site law"
-                )

@@ -222,8 +222,9 @@ def _maxima(
     A maximum is clear where it rises by a tenth of the largest above the lower of the two valleys
     that part it from higher ones.
     """
-    inner = np.flatnonzero((rate[1:-1] >= rate[:-2]) & (rate[1:-1] > rate[2:])) + 1
     top = int(np.argmax(rate))
+    turns = (rate[1:-1] >= rate[:-2]) & (rate[1:-1] > rate[2:])
+    inner = np.flatnonzero(turns & (rate[1:-1] > _CLEAR * rate[top])) + 1
     found = []
     for k in inner:
         valleys = [_valley(side) for side in (rate[k::-1], rate[k:])]

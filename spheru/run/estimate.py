@@ -210,7 +210,8 @@ def _doubts_of_size(found: Kinetics, made: Plan) -> list[str]:
     if final < _WHOLE:
         notes.append(
             f"not fully crystallised: {100 * final:.3g} % of the material has transformed when "
-            "the history ends; the rest is label 0"
+            "the history ends; the rest is label 0 (spherulites expected in a section are then "
+            "counted as if they hardly touched: a few fewer will be seen)"
         )
     if made.spherulites < 100:
         notes.append(

@@ -70,7 +70,7 @@ def test_window_is_written_in_the_units_of_the_user():
 
 def test_film_writes_its_thickness_apart():
     settings = read_settings(next(path for path in CONFIGS if path.stem == "film"))
-    assert resolved_document(settings)["sample"]["size"] == ["300 um", "300 um"]
+    assert resolved_document(settings)["sample"]["size"] == ["400 um", "400 um"]
 
 
 def test_attachments_make_the_folder_runnable(tmp_path):

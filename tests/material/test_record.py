@@ -72,14 +72,6 @@ def test_impossible_or_too_high_pressures_are_refused(pressure):
         RECORD.at_pressure(pressure)
 
 
-def test_effects_inside_the_site_law_are_not_counted_twice():
-    RECORD.refuse_counted_twice("melt memory")
-    with pytest.raises(ValidityError, match="no induction on top"):
-        RECORD.refuse_counted_twice("melt memory", "induction")
-    with pytest.raises(UnknownNameError, match="melt memory"):
-        RECORD.refuse_counted_twice("melt-memory")
-
-
 def test_record_travels_to_another_process():
     assert pickle.loads(pickle.dumps(RECORD)) == RECORD  # noqa: S301 (our own bytes)
     assert isinstance(hash(RECORD), int)

@@ -28,7 +28,7 @@ MELTING, WARM = 450.0, 400.0  # K
 class ConstantRate:
     """A nucleation rate of the same value at all temperatures."""
 
-    def __init__(self, value):
+    def __init__(self, value) -> None:
         self.value = value
 
     def rate(self, temperature):
@@ -73,20 +73,32 @@ def box(extent, **edges):
 
 
 def neighbours(labels):
-    """Return the number of labels that share a pixel face with each label, as by `bincount`."""
+    """Return the number of labels that share a pixel face with each label, as by `bincount`.
+
+    >>> neighbours(np.array([[1, 1, 2, 3]])).tolist()  # periodic: a ring of three
+    [0, 2, 2, 2]
+    """
     most = int(labels.max()) + 1
     pairs = []
     for axis in range(labels.ndim):
         here, there = labels, np.roll(labels, -1, axis)
         differ = here != there
-        low, high = (f(here[differ], there[differ]).astype(np.int64) for f in (np.minimum, np.maximum))
+        low, high = (
+            f(here[differ], there[differ]).astype(np.int64) for f in (np.minimum, np.maximum)
+        )
         pairs.append(np.unique(low * most + high))
     low, high = np.divmod(np.unique(np.concatenate(pairs)), most)
     return np.bincount(low, minlength=most) + np.bincount(high, minlength=most)
 
 
 def chords(labels):
-    """Return the lengths of the runs of one label along all rows of the last axis."""
+    """Return the lengths of the runs of one label along all rows of the last axis.
+
+    >>> chords(np.array([[1, 1, 2, 2, 2, 1], [3, 3, 3, 4, 4, 4]])).tolist()
+    [3, 3, 3, 3]
+
+    A row of one label only has no end and gives none.
+    """
     rows = labels.reshape(-1, labels.shape[-1])
     ends, places = np.nonzero(rows != np.roll(rows, -1, axis=1))
     lengths = np.diff(places, append=0)
@@ -101,6 +113,9 @@ def triple_points(labels):
 
     They stand where windows of two by two pixels hold three labels, twice where they hold four; a
     label that fills two opposite corners hangs together there and parts the two others.
+
+    >>> triple_points(np.array([[1, 1, 1, 1], [1, 2, 3, 1], [1, 1, 1, 1]]))  # 2 beside 3, within 1
+    2
     """
     here, right = labels, np.roll(labels, -1, axis=-1)
     down, across = np.roll(here, -1, axis=-2), np.roll(right, -1, axis=-2)

@@ -85,12 +85,12 @@ def test_plane(plane, name, value, error, less, more):
 # 13 pixels per unit are 10.5 per mean chord: 2 % * 13/10.5 = 2.5 % of the boundary
 @rows(
     ("drawn", 1.0, 1 / math.sqrt(26.6e3)),
-    ("density", 0.896012, 0.0066),  # Gamma(5/4) (3/pi)^(1/4)
-    ("mean size", 1.116056, 0.0082),
+    ("density", 0.896012, 0.0060),  # Gamma(5/4) (3/pi)^(1/4)
+    ("mean size", 1.116056, 0.0075),
     ("variation of size", 1.136265, 0.017),  # quadrature
-    ("boundary", 2.479254, 0.0047, 0.062),  # 2.5 %
-    ("chord", 0.806694, 0.0019, 0.0, 0.020),  # 2/S_V; 2.5 %
-    ("triple lines", 4.558575, 0.021, 0.09),  # (pi/15) int Lambda'^3 exp(-Lambda) dt; 2 %
+    ("boundary", 2.479254, 0.0054, 0.062),  # 2.5 %
+    ("chord", 0.806694, 0.0025, 0.0, 0.020),  # 2/S_V; 2.5 %
+    ("triple lines", 4.558575, 0.024, 0.09),  # (pi/15) int Lambda'^3 exp(-Lambda) dt; 2 %
 )
 def test_space(space, name, value, error, less, more):
     assert_within(space[name], value, error, less, more)
@@ -120,9 +120,9 @@ def test_section():
     region = box((6.0, *frame.extent))
     born = survivors_of(populations(("rate", 1.0)), region, until=END[3], seed=7)[1]
     image = tessellate(born, frame, period_z=6.0)
-    assert_within(triple_points(image.labels) / frame.measure, lines / 2, 0.009)
+    assert_within(triple_points(image.labels) / frame.measure, lines / 2, 0.0128)
     # 1.4 % are lost as slivers (3 % at 10 pixels across), and a few grains are cut twice
-    assert_within(image.count / frame.measure, lines / 4, 0.0047, 0.014 * lines / 4)
+    assert_within(image.count / frame.measure, lines / 4, 0.0065, 0.014 * lines / 4)
     found = measure_sizes(image).statistics.boundary_density.value
     surface = math.pi / 4 * 2.479254  # E. E. Underwood, Quantitative Stereology, 1970 (memory)
-    assert_within(found, surface, 0.0074, 0.02 * surface)
+    assert_within(found, surface, 0.0079, 0.02 * surface)

@@ -105,21 +105,21 @@ def section():
 
 # name, value, standard error at 1e4 cells, what pixels take off, what they add
 @rows(
-        ("neighbours", 6.0, 0.003, 0.04),  # Euler; 0.03 at 25 pixels across
-        ("triple points", 2.0, 0.001),  # Euler
-        ("boundary", 2.0, 0.0028, 0.04),  # Meijering: 2 lambda^(1/2); 2 %
-        ("variance", 0.280176, 0.0056),  # Gilbert
-        ("weighted mean", 1.280176, 0.0056),  # the same
-        ("skewness", 1.029, 0.050),  # counted, +- 0.003
-        ("median", 0.9111, 0.0049),  # counted, +- 0.0005
-        ("below a half", 0.1630, 0.0039),  # counted, +- 0.0002
-        ("above two", 0.0494, 0.0020),  # counted, +- 0.0001
-        ("gamma shape", 3.519, 0.063),  # counted, +- 0.003
-        ("diameter", 1.0893, 0.0007),  # counted, +- 0.0001
-        ("spread of diameter", 0.2944, 0.0025),  # counted, +- 0.0001
-        ("chord", math.pi / 4, 0.0020, 0.0, 0.016),  # Meijering; 2 % of the ends are missed
-        ("variation of chord", 0.30677, 0.0020, 0.026),  # quadrature; 1 + CV2 falls as their number
-        ("correlation", 0.5666, 0.0062),  # counted, +- 0.0003
+    ("neighbours", 6.0, 0.003, 0.04),  # Euler; 0.03 at 25 pixels across
+    ("triple points", 2.0, 0.001),  # Euler
+    ("boundary", 2.0, 0.0028, 0.04),  # Meijering: 2 lambda^(1/2); 2 %
+    ("variance", 0.280176, 0.0056),  # Gilbert
+    ("weighted mean", 1.280176, 0.0056),  # the same
+    ("skewness", 1.029, 0.050),  # counted, +- 0.003
+    ("median", 0.9111, 0.0049),  # counted, +- 0.0005
+    ("below a half", 0.1630, 0.0039),  # counted, +- 0.0002
+    ("above two", 0.0494, 0.0020),  # counted, +- 0.0001
+    ("gamma shape", 3.519, 0.063),  # counted, +- 0.003
+    ("diameter", 1.0893, 0.0007),  # counted, +- 0.0001
+    ("spread of diameter", 0.2944, 0.0025),  # counted, +- 0.0001
+    ("chord", math.pi / 4, 0.0020, 0.0, 0.016),  # Meijering; 2 % of the ends are missed
+    ("variation of chord", 0.30677, 0.0020, 0.026),  # quadrature; 1 + CV2 falls as their number
+    ("correlation", 0.5666, 0.0062),  # counted, +- 0.0003
 )
 def test_plane(plane, name, value, error, less, more):
     assert_within(plane[name], value, error * math.sqrt(1e4 / plane["cells"]), less, more)
@@ -127,16 +127,16 @@ def test_plane(plane, name, value, error, less, more):
 
 # 13 pixels per spacing are 8.9 per mean chord: 2 % * 13/8.9 = 2.9 % of the boundary
 @rows(
-        ("neighbours", 48 * math.pi**2 / 35 + 2, 0.033, 0.27),  # Meijering; 0.13 at 26 pixels
-        ("variance of neighbours", 11.14, 0.21, 0.4),  # counted, +- 0.011; small faces are missed
-        ("correlation", 0.7356, 0.005),  # counted, +- 0.0006
-        ("boundary", 2.910436, 0.0026, 0.085),  # Meijering; 2.9 %
-        ("variance", 0.179032, 0.0035),  # Gilbert
-        ("gamma shape", 5.460, 0.10),  # counted, +- 0.012
-        ("diameter", 1.21557, 0.0005),  # counted, +- 0.00006
-        ("spread of diameter", 0.1768, 0.0016),  # counted
-        ("chord", 0.687182, 0.0015, 0.0, 0.020),  # Meijering; 2.9 %
-        ("triple lines", 5.831860, 0.012, 0.12),  # Meijering; 2 %
+    ("neighbours", 48 * math.pi**2 / 35 + 2, 0.033, 0.27),  # Meijering; 0.13 at 26 pixels
+    ("variance of neighbours", 11.14, 0.21, 0.4),  # counted, +- 0.011; small faces are missed
+    ("correlation", 0.7356, 0.005),  # counted, +- 0.0006
+    ("boundary", 2.910436, 0.0026, 0.085),  # Meijering; 2.9 %
+    ("variance", 0.179032, 0.0035),  # Gilbert
+    ("gamma shape", 5.460, 0.10),  # counted, +- 0.012
+    ("diameter", 1.21557, 0.0005),  # counted, +- 0.00006
+    ("spread of diameter", 0.1768, 0.0016),  # counted
+    ("chord", 0.687182, 0.0015, 0.0, 0.020),  # Meijering; 2.9 %
+    ("triple lines", 5.831860, 0.012, 0.12),  # Meijering; 2 %
 )
 def test_space(space, name, value, error, less, more):
     assert_within(space[name], value, error * math.sqrt(1e4 / space["cells"]), less, more)
@@ -144,13 +144,13 @@ def test_space(space, name, value, error, less, more):
 
 # 25 pixels per spacing are 21 per mean diameter: of 3 % at 10 pixels 1.4 % of the pieces are lost
 @rows(
-        ("pieces", 1.457965, 0.0100, 0.021),  # Meijering; 1.4 %
-        ("triple points", 2 * 1.457965, 0.021),  # two per piece, Euler
-        ("mean area", 0.685888, 0.0048, 0.0, 0.010),  # 1.4 % fewer pieces
-        ("edges", 6.0, 0.003, 0.08),  # 0.03 at 25 pixels across, and more for slivers
-        ("boundary", math.pi / 4 * 2.910436, 0.0072, 0.046),  # Underwood; 2 %
-        ("diameter", 0.8569, 0.0034, 0.0, 0.012),  # counted, +- 0.0007; 1.4 % fewer pieces
-        ("gamma shape", 1.089, 0.0166, 0.0, 0.20),  # counted, +- 0.006; hangs on the slivers
+    ("pieces", 1.457965, 0.0100, 0.021),  # Meijering; 1.4 %
+    ("triple points", 2 * 1.457965, 0.021),  # two per piece, Euler
+    ("mean area", 0.685888, 0.0048, 0.0, 0.010),  # 1.4 % fewer pieces
+    ("edges", 6.0, 0.003, 0.08),  # 0.03 at 25 pixels across, and more for slivers
+    ("boundary", math.pi / 4 * 2.910436, 0.0072, 0.046),  # Underwood; 2 %
+    ("diameter", 0.8569, 0.0034, 0.0, 0.012),  # counted, +- 0.0007; 1.4 % fewer pieces
+    ("gamma shape", 1.089, 0.0166, 0.0, 0.20),  # counted, +- 0.006; hangs on the slivers
 )
 def test_section(section, name, value, error, less, more):
     assert_within(section[name], value, error, less, more)

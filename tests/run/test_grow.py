@@ -58,8 +58,10 @@ def test_number_of_nuclei_agrees_with_the_mean_field(result):
 
 def test_boundary_density_agrees_with_the_mean_field_less_the_loss_by_pixels(result):
     expected = result.estimate.numbers.get("boundary_density_per_mm")
+    # the mean field of a film leaves it out
+    assert (expected is None) == (result.settings.sample.view == "film")
     if expected is None:
-        pytest.skip("the mean field of a film has no boundary density")
+        return
     error = standard_error(result.summary, "boundary_density_per_mm")
     ratio = result.summary["boundary_density_per_mm"] / expected
     # rows of pixels miss 1 to 2 % at 20 to 25 pixels per chord, in proportion to the pixel

@@ -1,13 +1,13 @@
 """Times of the exact engine as ratios: over a warm fill and over scipy's distance transform.
 
-Run with ``python -m pytest tests/bench/bench_exact.py -m bench -s``. It fails on a wrong label, never on
-a time.
+Run with ``python -m pytest tests/bench -m bench -s``. It fails on a wrong label, never on a time.
 """
 
 from __future__ import annotations
 
 import os
 import platform
+import sys
 import time
 
 import numba
@@ -24,6 +24,8 @@ from spheru.image.frame import Frame
 pytestmark = pytest.mark.bench
 
 REPEATS = 7
+
+say = sys.stdout.write
 
 
 def seconds(work):
@@ -55,12 +57,12 @@ def machine():
     tessellate(births_in((8, 8), 3), frame)
     first = time.perf_counter() - start
     compiled = len(kernels.tessellate_kernel.stats.cache_misses)
-    print(
+    say(
         f"\n{platform.processor() or platform.machine()}, {os.cpu_count()} cores, load "
         f"{os.getloadavg()[0]:.1f}; Python {platform.python_version()}, numpy {np.__version__}, "
         f"numba {numba.__version__}, scipy {scipy.__version__}; first call {first:.1f} s "
         f"({'compiled' if compiled else 'from cache'}); least of {REPEATS} repeats, (longest over "
-        "least)"
+        "least)\n"
     )
 
 
@@ -68,12 +70,10 @@ def row(name, shape, births, frame, **options):
     fill = fill_seconds(shape)
     one, spread_one = seconds(lambda: tessellate(births, frame, threads=1, **options))
     two, spread_two = seconds(lambda: tessellate(births, frame, threads=2, **options))
-    print(
+    say(
         f"{name:34s} fill {fill * 1e3:6.1f} ms | 1 thread {one:6.3f} s ({spread_one:.2f}) = "
         f"{one / fill:6.1f} fills | 2 threads {two:6.3f} s ({spread_two:.2f}) = "
         f"{two / fill:6.1f} fills, {one / two:.2f} times faster",
-        end="",
-        flush=True,
     )
     return one
 
@@ -105,7 +105,7 @@ def test_against_the_distance_transform(shape, n, request):
         start = time.perf_counter()
         transform()
         taken = min(taken, time.perf_counter() - start)
-    print(f" | distance transform with gather {taken:.2f} s = {taken / one:.1f} times ours")
+    say(f" | distance transform with gather {taken:.2f} s = {taken / one:.1f} times ours\n")
     labels = tessellate(births, frame).labels
     differ = np.argwhere(labels != expected)
     ours = position[labels[tuple(differ.T)] - 1]
@@ -123,7 +123,7 @@ def test_large_block(size, late):
     births = births_in(shape, round(512**3 / size**3), late=late * size)
     frame = Frame(shape=shape, pixel=1.0, periodic=True)
     row(f"512^3 at {size} px, late {late:g}", shape, births, frame)
-    print()
+    say("\n")
 
 
 @pytest.mark.parametrize("late", [0.0, 88.0], ids=["born together", "born over one size"])
@@ -131,7 +131,7 @@ def test_section_of_a_large_body(late):
     births = births_in((4096,) * 3, 100_000, late=late)
     frame = Frame(shape=(4096, 4096), pixel=1.0, periodic=True, plane_z=2048.0)
     row(f"4096^2 of 4096^3, 1e5, late {late:g}", (4096, 4096), births, frame, period_z=4096.0)
-    print()
+    say("\n")
 
 
 def test_arrival_map():
@@ -139,4 +139,4 @@ def test_arrival_map():
     births = births_in(shape, 256**3 // 24**3, late=24.0)
     frame = Frame(shape=shape, pixel=1.0, periodic=True)
     row("256^3 at 24 px with arrival", shape, births, frame, arrival=True)
-    print()
+    say("\n")
