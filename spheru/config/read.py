@@ -21,7 +21,7 @@ from spheru.config.sources import build_sources, has_background
 from spheru.config.tables import GROWTH_COLUMNS, NUCLEI_COLUMNS, SITE_COLUMNS, with_columns
 from spheru.errors import Fault, nearest
 from spheru.files import read_text
-from spheru.material.nucleation_law import melt_memory_factor
+from spheru.material.site_law import melt_memory_factor
 from spheru.run.settings import Induction, Settings
 
 if TYPE_CHECKING:

@@ -31,15 +31,15 @@ from spheru.material.growth_law import (
     TableGrowth,
     molar_mass_factor,
 )
-from spheru.material.nucleation_law import ExponentialSites, FixedSites, TableSites
 from spheru.material.record import MaterialRecord, Provenance
+from spheru.material.site_law import ExponentialSites, FixedSites, TableSites
 
 if TYPE_CHECKING:
     from collections.abc import Collection, Mapping, Sequence
 
     from spheru.config.models import DecadesTable, GrowthRateTable
     from spheru.material.growth_law import GrowthLaw
-    from spheru.material.nucleation_law import SiteLaw
+    from spheru.material.site_law import SiteLaw
 
 __all__ = [
     "PLAIN",

@@ -24,14 +24,8 @@ from spheru.config.models import (
 from spheru.errors import Fault
 from spheru.material.dosage import active_sites, dissolved_sites, particle_density
 from spheru.material.growth_law import LauritzenHoffmanGrowth
-from spheru.material.nucleation_law import (
-    ActivatedSites,
-    ClassicalNucleation,
-    ExponentialSites,
-    FixedSites,
-    SubstrateNucleation,
-    TableSites,
-)
+from spheru.material.rate_law import ClassicalNucleation, SubstrateNucleation
+from spheru.material.site_law import ActivatedSites, ExponentialSites, FixedSites, TableSites
 from spheru.nuclei.activation import Athermal, Homogeneous, Thermal
 from spheru.nuclei.placement import Clustered, Faces, Uniform
 from spheru.nuclei.source import Source
@@ -40,8 +34,8 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from spheru.config.models import Table
-    from spheru.material.nucleation_law import SiteLaw
     from spheru.material.record import MaterialRecord
+    from spheru.material.site_law import SiteLaw
     from spheru.nuclei.activation import Activation as When
     from spheru.nuclei.placement import Placement
 

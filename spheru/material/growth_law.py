@@ -7,6 +7,7 @@ A law is a frozen record of parameters around a pure function of temperature.
 from __future__ import annotations
 
 import math
+from abc import ABC, abstractmethod
 from dataclasses import dataclass, replace
 from itertools import pairwise
 from typing import TYPE_CHECKING, Protocol, runtime_checkable
@@ -584,8 +585,26 @@ class LauritzenHoffmanGrowth:
         )
 
 
+class _Smooth(ABC):
+    """A growth law without jumps: its rate is smooth up to the ends of its window."""
+
+    __slots__ = ()
+
+    @abstractmethod
+    def window(self) -> tuple[float, float]:
+        """Return the temperatures outside which the rate is 0 [K]."""
+
+    def breakpoints(self) -> tuple[float, ...]:
+        """Return the ends of the window [K], where the rate becomes 0."""
+        return self.window()
+
+    def jumps(self) -> tuple[tuple[float, float], ...]:
+        """Return no jump."""
+        return ()
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
-class BellGrowth:
+class BellGrowth(_Smooth):
     """The bell-shaped short form, cut off at T_inf and at Tm0.
 
     Attributes
@@ -655,26 +674,6 @@ class BellGrowth:
         )
         return np.where((kelvin > self.t_inf) & (kelvin < self.t_m0), rate, 0.0)
 
-    def breakpoints(self) -> tuple[float, ...]:
-        """Return the ends of the window.
-
-        Returns
-        -------
-        temperatures : tuple of float
-            Rising temperatures [K].
-        """
-        return self.window()
-
-    def jumps(self) -> tuple[tuple[float, float], ...]:
-        """Return no jump: the bell is smooth.
-
-        Returns
-        -------
-        jumps : tuple
-            Empty.
-        """
-        return ()
-
     def window(self) -> tuple[float, float]:
         """Return the temperatures outside which the rate is 0.
 
@@ -728,7 +727,7 @@ class BellGrowth:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
-class TableGrowth:
+class TableGrowth(_Smooth):
     """Measured growth rates against temperature, interpolated; 0 outside the table.
 
     Attributes
@@ -798,26 +797,6 @@ class TableGrowth:
         return interpolated_growth_rate(
             temperature, table_temperature=self.temperature, table_rate=self.growth_rate
         )
-
-    def breakpoints(self) -> tuple[float, ...]:
-        """Return the ends of the table, where the rate falls to 0.
-
-        Returns
-        -------
-        temperatures : tuple of float
-            Rising temperatures [K].
-        """
-        return self.window()
-
-    def jumps(self) -> tuple[tuple[float, float], ...]:
-        """Return no jump: inside the table the rate is smooth.
-
-        Returns
-        -------
-        jumps : tuple
-            Empty.
-        """
-        return ()
 
     def window(self) -> tuple[float, float]:
         """Return the temperatures outside which the rate is 0.

@@ -20,7 +20,7 @@ if TYPE_CHECKING:
     from numpy.typing import ArrayLike, NDArray
 
     from spheru.material.growth_law import GrowthLaw
-    from spheru.material.nucleation_law import SiteLaw
+    from spheru.material.site_law import SiteLaw
 
 __all__ = ["REFERENCE_PRESSURE", "SITE_OPTIONS", "Mark", "MaterialRecord", "Provenance"]
 

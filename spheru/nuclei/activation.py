@@ -20,7 +20,8 @@ if TYPE_CHECKING:
 
     from numpy.typing import NDArray
 
-    from spheru.material.nucleation_law import RateLaw, SiteLaw
+    from spheru.material.rate_law import RateLaw
+    from spheru.material.site_law import SiteLaw
     from spheru.thermal.clock import Clock
 
 __all__ = ["Activation", "Athermal", "Homogeneous", "Thermal"]
@@ -104,7 +105,7 @@ class Athermal(Activation):
     Sites of an agent that start at 450 - 20 = 430 K, half of them lost to agglomeration:
 
     >>> from types import SimpleNamespace
-    >>> from spheru.material.nucleation_law import ActivatedSites
+    >>> from spheru.material.site_law import ActivatedSites
     >>> agent = Athermal(law=ActivatedSites(number=1e12, activation=20.0), t_m0=450.0, factor=0.5)
     >>> clock = SimpleNamespace(
     ...     time=np.array([0.0, 1.0, 2.0]), lowest_temperature=np.array([440.0, 429.0, 429.0])

@@ -87,7 +87,7 @@ def draw_births(
     1e12 sites per m3 that are there from the start, in a cube of 0.1 mm: 1e12 * 1e-12 = 1 is
     expected; in one of 1 mm 1000, give or take 32.
 
-    >>> from spheru.material.nucleation_law import FixedSites
+    >>> from spheru.material.site_law import FixedSites
     >>> from spheru.nuclei.activation import Athermal
     >>> from spheru.nuclei.region import Region
     >>> from spheru.nuclei.source import Source

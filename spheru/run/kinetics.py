@@ -13,7 +13,7 @@ import numpy as np
 
 from spheru.constants import ZERO_CELSIUS
 from spheru.errors import MeltingError, NoCrystallisationError
-from spheru.material.nucleation_law import induction_time
+from spheru.material.rate_law import induction_time
 from spheru.nuclei.placement import Faces
 from spheru.theory.conversion import mean_field
 from spheru.theory.film import film_mean_field

@@ -8,7 +8,7 @@ import pytest
 from spheru.config.records import load_record, overridden, read_record, record_names
 from spheru.errors import ConfigError, DataError, UnknownNameError
 from spheru.material.growth_law import BellGrowth, TableGrowth, molar_mass_factor
-from spheru.material.nucleation_law import FixedSites, TableSites
+from spheru.material.site_law import FixedSites, TableSites
 
 # A record as a user would write it: plain values, no marks.
 PLAIN = """

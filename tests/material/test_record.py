@@ -7,8 +7,8 @@ import pytest
 
 from spheru.errors import UnknownNameError, ValidityError
 from spheru.material.growth_law import Branch, LauritzenHoffmanGrowth
-from spheru.material.nucleation_law import ExponentialSites
 from spheru.material.record import REFERENCE_PRESSURE, MaterialRecord, Provenance
+from spheru.material.site_law import ExponentialSites
 
 RECORD = MaterialRecord(
     name="test",

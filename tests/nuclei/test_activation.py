@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from spheru.errors import ValidityError
-from spheru.material.nucleation_law import ActivatedSites, ExponentialSites, FixedSites
+from spheru.material.site_law import ActivatedSites, ExponentialSites, FixedSites
 from spheru.nuclei.activation import Athermal, Homogeneous, Thermal
 from tests.nuclei import reference
 

@@ -8,7 +8,7 @@ import pytest
 from scipy import stats
 
 from spheru.errors import CapacityError, UnknownNameError, ValidityError
-from spheru.material.nucleation_law import ExponentialSites
+from spheru.material.site_law import ExponentialSites
 from spheru.nuclei.activation import Athermal
 from spheru.nuclei.placement import Clustered, Faces, Uniform
 from spheru.nuclei.region import Region

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from spheru.errors import ValidityError
-from spheru.material.nucleation_law import ActivatedSites
+from spheru.material.site_law import ActivatedSites
 from spheru.nuclei.activation import Athermal
 from spheru.nuclei.placement import Uniform
 from spheru.nuclei.source import Source

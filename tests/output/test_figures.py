@@ -14,8 +14,8 @@ from spheru.errors import FolderError
 from spheru.image.frame import Frame
 from spheru.image.label_image import LabelImage
 from spheru.material.growth_law import Branch, LauritzenHoffmanGrowth
-from spheru.material.nucleation_law import ExponentialSites
 from spheru.material.record import MaterialRecord
+from spheru.material.site_law import ExponentialSites
 from spheru.measure.sizes import measure_sizes
 from spheru.output.plots.canvas import _palette, png, root_figure
 from spheru.output.plots.conversion import plot_conversion, plot_fraction, plot_heat_flow

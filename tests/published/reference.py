@@ -13,7 +13,7 @@ from scipy.optimize import brentq
 from scipy.special import digamma
 
 from spheru.births import Births
-from spheru.material.nucleation_law import FixedSites
+from spheru.material.site_law import FixedSites
 from spheru.nuclei.activation import Athermal, Homogeneous
 from spheru.nuclei.region import Region
 from spheru.nuclei.sampling import draw_births

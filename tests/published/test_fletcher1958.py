@@ -7,7 +7,7 @@ it, apart from this package, and rounded to six places. Its limits are the cap o
 
 import pytest
 
-from spheru.material.nucleation_law import flat_cap_factor, fletcher_factor
+from spheru.material.nucleation_barrier import flat_cap_factor, fletcher_factor
 
 RATIOS = (0.1, 0.5, 1.0, 2.0, 10.0, 100.0)
 # m = cos(contact angle): factor at each ratio of particle to critical radius, flat limit

@@ -17,7 +17,7 @@ from spheru.material.growth_law import (
     bell_growth_rate,
     nucleation_constant,
 )
-from spheru.material.nucleation_law import block_barrier, substrate_barrier
+from spheru.material.nucleation_barrier import block_barrier, substrate_barrier
 from spheru.material.thermodynamics import (
     critical_radius,
     driving_force,
