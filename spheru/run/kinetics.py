@@ -31,6 +31,8 @@ __all__ = ["Kinetics", "Walls", "kinetics"]
 
 # A step of the clock may change the transformed fraction by no more than this.
 _LARGEST_STEP = 2e-3
+# The logarithm of the share that is left may fall by no more than this.
+_LARGEST_DECAY = 0.25
 _MOST_PARTS = 64  # into which an interval is divided at once
 _PASSES = 40
 # Below this transformed fraction nothing has crystallised that could melt or be seen.
@@ -159,9 +161,13 @@ def kinetics(settings: Settings, *, temperature_step: float = 0.01) -> Kinetics:
     sources = tuple(source.delayed(start) for source in settings.sources)
     found = _solve(settings, clock, sources)
     for _ in range(_PASSES):
-        times = clock.time_at(found.bulk.refinement(_LARGEST_STEP))
-        if found.film is not None:
-            times = np.concatenate([times, _between(clock.time, found.film.fraction)])
+        times = np.concatenate(
+            [
+                clock.time_at(found.bulk.refinement(_LARGEST_STEP)),
+                _between(clock.time, found.fraction, _LARGEST_STEP),
+                _between(clock.time, _unfilled(found.fraction), _LARGEST_DECAY),
+            ]
+        )
         if times.size == 0:
             break
         clock = clock.refined(times)
@@ -237,9 +243,16 @@ def _induction_end(settings: Settings, clock: Clock) -> float:
     return float(np.interp(1.0, passed, clock.time))
 
 
-def _between(time: NDArray[np.float64], fraction: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Return times that divide the intervals over which a fraction changes too much."""
-    parts = np.ceil(np.diff(fraction) / _LARGEST_STEP).clip(1, _MOST_PARTS).astype(np.int64)
+def _unfilled(fraction: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return minus the logarithm of the share that is left, as far as it can be seen."""
+    return -np.log(np.maximum(1 - fraction, _NOTHING))
+
+
+def _between(
+    time: NDArray[np.float64], values: NDArray[np.float64], step: float
+) -> NDArray[np.float64]:
+    """Return times that divide the intervals over which values rise by more than a step."""
+    parts = np.ceil(np.diff(values) / step).clip(1, _MOST_PARTS).astype(np.int64)
     wide = np.flatnonzero((parts > 1) & (np.diff(time) > 1e-9 * time[-1]))
     pieces = [np.linspace(time[k], time[k + 1], parts[k] + 1)[1:-1] for k in wide]
     return np.concatenate([np.empty(0), *pieces])

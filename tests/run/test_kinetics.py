@@ -39,6 +39,8 @@ def test_a_long_hold_is_resolved_where_everything_happens():
     steps = ({"quench": "110 degC", "time_constant": "10 ms", "for": "0.3 s"}, {"hold": "1000 h"})
     found = kinetics(settings_with(cooling=cooling(*steps)))
     assert np.diff(found.fraction).max() < 0.01
+    left = 1 - found.fraction[(found.fraction > 0.5) & (found.fraction < 1 - 1e-5)]
+    assert (left[:-1] / left[1:]).max() < 2
     density = math.exp(0.156 * (483.15 - 383.15) + 15.1)
     assert_allclose(found.bulk.number_density, density, rtol=1e-3)
     assert_allclose(found.bulk.boundary_density, 2.910436 * density ** (1 / 3), rtol=1e-3)

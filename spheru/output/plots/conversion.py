@@ -133,8 +133,9 @@ def plot_heat_flow(conversion: Conversion, *, ax: Axes | None = None) -> Axes:
     else:
         marks, unit = [float(x[flow.argmax()])] if flow.any() else [], _time_unit(conversion)[1]
     order = np.argsort(x, kind="stable")
+    upper = np.maximum(flow, conversion.heat_flow_estimate * 1e-3)[order]
     for mark in marks:
-        height = float(np.interp(mark, x[order], flow[order]))
+        height = float(np.interp(mark, x[order], upper))  # the label stands clear of both curves
         ax.plot([mark, mark], [0, height], color=GREY, linewidth=0.8, linestyle=":")
         ax.annotate(
             f"{mark:.1f} {unit}" if unit == "°C" else f"{mark:.3g} {unit}",
