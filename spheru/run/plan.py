@@ -103,24 +103,13 @@ def plan(settings: Settings, found: Kinetics) -> Plan:
     ValidityError
         If a pixel is larger than the window, or the window would hold no spherulite.
     """
-    sample, notices = _settle(settings, found)
-    assert_size, pixel = sample.size, sample.pixel
-    if assert_size is None or pixel is None:  # settled above
-        raise ValidityError("sample: give a size or a number of spherulites, and a pixel")
-    shape = tuple(max(1, round(edge / pixel)) for edge in assert_size)
-    extent = tuple(n * pixel for n in shape)
-    for name, asked, got in zip("xyz", assert_size[::-1], extent[::-1], strict=False):
-        if abs(got / asked - 1) > 1e-9:
-            notices.append(
-                f"{name} is {got * 1e6:.6g} um: whole pixels nearest to {asked * 1e6:.6g} um"
-            )
-    sample = replace(sample, size=extent)
-    frame = Frame(
-        shape=shape,
-        pixel=pixel,
-        periodic=tuple(edge == "periodic" for edge in sample.edges),
-        closed=tuple(edge == "closed" for edge in sample.edges),
-        plane_z=0.0 if sample.view == "section" else None,
+    frame, notices = _frame(settings.sample, found)
+    sample = replace(
+        settings.sample,
+        size=frame.extent,
+        pixel=frame.pixel,
+        spherulites=None,
+        pixels_across=None,
     )
     cautious = _cautious_field(sample, found)
     reach = _reach(cautious, frame.pixels)
@@ -134,9 +123,7 @@ def plan(settings: Settings, found: Kinetics) -> Plan:
             f"is {typical_diameter(sample, found) * 1e6:.4g} um: choose a window at least ten "
             "times as wide, or write spherulites = 1000 instead of size"
         )
-    final = found.fraction[-1]
-    # a full window has no pixel that is reached after the end of the history
-    full = (1 - final) * frame.pixels < _STILL_TO_COME
+    end = float(found.clock.grown_length[-1])
     memory = _BASE_BYTES + _BYTES_PER_PIXEL * frame.pixels + int(_BYTES_PER_BIRTH * candidates)
     return Plan(
         sample=sample,
@@ -145,7 +132,7 @@ def plan(settings: Settings, found: Kinetics) -> Plan:
         count_depth=reach if sample.view == "section" else None,
         until=until,
         reach=reach,
-        end=math.inf if full else float(found.clock.grown_length[-1]),
+        end=math.inf if reach < end else end,  # no pixel of a full window is reached later
         candidates=candidates,
         spherulites=wanted,
         memory=memory,
@@ -216,14 +203,45 @@ def refuse_too_large(made: Plan) -> None:
     )
 
 
-def _settle(settings: Settings, found: Kinetics) -> tuple[Sample, list[str]]:
-    """Fill in the window and the pixel that follow from the mean field."""
-    sample, notices = settings.sample, []
-    typical = typical_diameter(sample, found)
-    pixel = sample.pixel
+def _frame(sample: Sample, found: Kinetics) -> tuple[Frame, list[str]]:
+    """Return the grid in whole pixels, and what was chosen or rounded for it."""
+    pixel, notices = _pixel(sample, found)
+    size = sample.size
+    if size is None:
+        axes = 3 if sample.view == "block" else 2
+        edge = ((sample.spherulites or 1000) / _picture_density(sample, found)) ** (1 / axes)
+        edge = max(1, round(edge / pixel)) * pixel
+        size = (edge,) * axes
+        if sample.view == "film" and sample.thickness is not None:
+            size = (sample.thickness, *size)
+    shape = tuple(max(1, round(edge / pixel)) for edge in size)
+    for name, edge, count in zip("xyz", size[::-1], shape[::-1], strict=False):
+        if pixel > edge * (1 + 1e-9):
+            raise ValidityError(
+                f"sample.pixel: expected a pixel smaller than the window, got {pixel * 1e6:.4g} um "
+                f"with {edge * 1e6:.4g} um along {name}"
+            )
+        if abs(count * pixel / edge - 1) > 1e-9:
+            notices.append(
+                f"{name} is {count * pixel * 1e6:.6g} um: whole pixels nearest to "
+                f"{edge * 1e6:.6g} um"
+            )
+    frame = Frame(
+        shape=shape,
+        pixel=pixel,
+        periodic=tuple(edge == "periodic" for edge in sample.edges),
+        closed=tuple(edge == "closed" for edge in sample.edges),
+        plane_z=0.0 if sample.view == "section" else None,
+    )
+    return frame, notices
+
+
+def _pixel(sample: Sample, found: Kinetics) -> tuple[float, list[str]]:
+    """Return the edge of a pixel, so that a film is a whole number of pixels thick."""
+    pixel, notices = sample.pixel, []
     if pixel is None:
-        pixel = typical / (sample.pixels_across or 25.0)
-        pixel = float(f"{pixel:.3g}")
+        typical = typical_diameter(sample, found)
+        pixel = float(f"{typical / (sample.pixels_across or 25.0):.3g}")
         notices.append(f"pixel {pixel * 1e6:.4g} um: typical diameter {typical * 1e6:.4g} um")
     if sample.view == "film" and sample.thickness is not None:
         rows = max(1, math.ceil(sample.thickness / pixel - 1e-9))
@@ -232,22 +250,7 @@ def _settle(settings: Settings, found: Kinetics) -> tuple[Sample, list[str]]:
                 f"pixel {sample.thickness / rows * 1e6:.6g} um: {rows} whole pixels across the film"
             )
         pixel = sample.thickness / rows
-    size = sample.size
-    if size is None:
-        density = _picture_density(sample, found)
-        axes = 3 if sample.view == "block" else 2
-        edge = ((sample.spherulites or 1000) / density) ** (1 / axes)
-        edge = max(1, round(edge / pixel)) * pixel
-        size = (edge,) * axes
-        if sample.view == "film" and sample.thickness is not None:
-            size = (sample.thickness, *size)
-    for name, edge in zip("xyz", size[::-1], strict=False):
-        if pixel > edge * (1 + 1e-9):
-            raise ValidityError(
-                f"sample.pixel: expected a pixel smaller than the window, got {pixel * 1e6:.4g} um "
-                f"with {edge * 1e6:.4g} um along {name}"
-            )
-    return replace(sample, size=size, pixel=pixel, spherulites=None, pixels_across=None), notices
+    return pixel, notices
 
 
 def _section_density(sample: Sample, found: Kinetics) -> float:
