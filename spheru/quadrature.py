@@ -14,7 +14,7 @@ import numpy as np
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-__all__ = ["GAUSS_POINTS", "GAUSS_WEIGHTS", "distinct"]
+__all__ = ["GAUSS_POINTS", "GAUSS_WEIGHTS", "distinct", "weighted_sum"]
 
 # Abramowitz & Stegun, "Handbook of Mathematical Functions", 25.4.29 and table 25.4 (memory; tested
 # against numpy): roots (1/3) sqrt(5 -+ 2 sqrt(10/7)), weights (322 +- 13 sqrt(70))/900 on [-1, 1].
@@ -23,6 +23,34 @@ _large, _small = ((322 + sign * 13 * math.sqrt(70)) / 900 for sign in (1, -1))
 
 GAUSS_POINTS: Final = (np.array([-_outer, -_inner, 0.0, _inner, _outer]) + 1) / 2
 GAUSS_WEIGHTS: Final = np.array([_small, _large, 128 / 225, _large, _small]) / 2
+
+
+def weighted_sum(values: NDArray[np.float64], weights: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return the sum of values times weights over the last axis.
+
+    The same to the last bit whatever the number of cores: a product of the linear-algebra library
+    (``@``) shares long sums out over its threads.
+
+    Parameters
+    ----------
+    values : ndarray of float64, shape (..., n)
+        Values.
+    weights : ndarray of float64, shape (n,)
+        Weights.
+
+    Returns
+    -------
+    total : ndarray of float64, shape (...)
+        The sums.
+
+    Examples
+    --------
+    1 * 3 + 2 * 4 = 11:
+
+    >>> float(weighted_sum(np.array([1.0, 2.0]), np.array([3.0, 4.0])))
+    11.0
+    """
+    return np.asarray((values * weights).sum(axis=-1), dtype=np.float64)
 
 
 def distinct(*values: NDArray[np.float64]) -> NDArray[np.float64]:

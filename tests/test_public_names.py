@@ -12,10 +12,12 @@ import spheru
 from spheru import errors
 
 PUBLIC = {
-    "Births", "Conversion", "Estimate", "Fault", "Frame", "LabelImage", "MaterialRecord", "Result",
-    "Settings", "Sizes", "Statistic", "estimate", "grow", "measure_sizes", "read_labels",
-    "read_record", "read_settings", "record_names", "save_run", "settings_from_mapping",
-    "settings_schema", "tessellate", "write_labels", "__version__",
+    "Births", "Conversion", "Estimate", "Fault", "Frame", "LabelImage", "LabelStore",
+    "MaterialRecord", "MeasuredField", "Measurement", "Result", "Settings", "Sizes",
+    "Statistic", "__version__", "estimate", "grow", "measure_images", "measure_sizes",
+    "read_labels", "read_record", "read_settings", "record_names", "save_measurement",
+    "save_run", "settings_from_mapping", "settings_schema", "store_run", "tessellate",
+    "write_labels",
 }  # fmt: skip
 ERRORS = {
     name

@@ -9,6 +9,7 @@ import click
 from spheru.cli.console import CAUTION, notices, print_json, print_numbers
 from spheru.config.read import read_settings
 from spheru.run.estimate import estimate
+from spheru.run.plan import fits_memory
 
 __all__ = ["command"]
 
@@ -40,4 +41,6 @@ def command(settings: Path, *, as_json: bool) -> None:
         f"a run: {pixels} pixels of {run['pixel_um']:.4g} um, about {run['candidate_nuclei']:.3g} "
         f"nuclei drawn, {run['memory_GB']:.2g} GB, roughly {run['seconds_about']:.2g} s"
     )
+    if expected.plan.frame.dimension == 3 and not fits_memory(expected.plan):
+        notices(["that is more memory than is free: a run would keep the map on the disk"])
     notices([*expected.plan.notices, *expected.warnings, CAUTION])

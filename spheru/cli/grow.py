@@ -23,6 +23,7 @@ __all__ = ["command"]
 @click.option("--overwrite", is_flag=True, help="Replace a run that is already there.")
 @click.option("--replica", type=click.IntRange(min=0), default=0, help="Other random numbers.")
 @click.option("--threads", type=click.IntRange(min=1), help="Threads to use; all by default.")
+@click.option("--store", is_flag=True, help="Keep the map on the disk, not in memory; resumable.")
 @click.option("--json", "as_json", is_flag=True, help="Print summary.json for programs.")
 def command(
     settings: Path,
@@ -31,24 +32,49 @@ def command(
     overwrite: bool,
     replica: int,
     threads: int | None,
+    store: bool,
     as_json: bool,
 ) -> None:
     """Grow the map of SETTINGS (TOML), measure it and write a folder.
 
     The folder holds the labelled map, pictures, tables and every headline number with its 95 %
     interval beside the mean field. The same settings and seed give the same bytes.
+
+    A volume larger than the free memory is written chunk by chunk instead (labels.ome.zarr; asked
+    for by --store): stopped at any point, it is continued by the same command.
     """
     asked = read_settings(settings)
     folder = output if output is not None else Path(settings.stem)
-    # the libraries behind these two take a second: not before the file is in order
+    # the libraries behind these take a second: not before the file is in order
     from spheru.output.folder import refuse_folder, save_run
+    from spheru.output.unfinished import store_run, unfinished_folder
+    from spheru.run.estimate import estimate
     from spheru.run.grow import grow
+    from spheru.run.plan import fits_memory
 
     refuse_folder(folder, overwrite=overwrite)
+    expected = estimate(asked)
+    volume = expected.plan.frame.dimension == 3
+    begun = volume and unfinished_folder(expected, folder, replica=replica).exists()
+    if volume and not (store or begun or fits_memory(expected.plan)):
+        store = True
+        gigabytes = f"{expected.plan.memory / 1e9:.1f} GB"
+        notices([f"the map needs {gigabytes} of memory, more than is free: it is kept on the disk"])
     with progress("growing") as tell:
-        result = grow(asked, replica=replica, threads=threads, progress=tell)
-        tell("writing", 0.97)
-        save_run(result, folder, overwrite=overwrite)
+        if store or begun:
+            result = store_run(
+                expected,
+                folder,
+                overwrite=overwrite,
+                replica=replica,
+                threads=threads,
+                progress=tell,
+                notice=lambda line: notices([line]),
+            )
+        else:
+            result = grow(asked, replica=replica, threads=threads, progress=tell, expected=expected)
+            tell("writing", 0.97)
+            save_run(result, folder, overwrite=overwrite)
     if as_json:
         print_json(result.summary)
     else:

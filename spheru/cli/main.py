@@ -24,6 +24,9 @@ __all__ = ["main"]
 COMMANDS: Final = {
     "estimate": ("spheru.cli.estimate", "Check a settings file and predict by mean field."),
     "grow": ("spheru.cli.grow", "Grow the map of a settings file and measure it."),
+    "series": ("spheru.cli.series", "Run many settings, or find the value that meets a target."),
+    "measure": ("spheru.cli.measure", "Measure label images, simulated or photographed."),
+    "report": ("spheru.cli.report", "Write the report of a run's folder from its files."),
     "materials": ("spheru.cli.materials", "List the material records, or show one."),
 }
 

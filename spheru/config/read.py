@@ -34,6 +34,7 @@ if TYPE_CHECKING:
 __all__ = ["read_settings", "settings_from_mapping"]
 
 _CONTROL = {"name", "file", "pressure", "background"}  # the rest of [material] overrides the record
+_OF_A_SERIES = ("series", "aim")  # tables that `spheru.config.series` reads
 _AT_TOP = 0.5  # K below the highest temperature that still counts as the hold of the melt
 _RECORD, _TRACE = "material.toml", "trace.csv"
 
@@ -109,6 +110,9 @@ class _Reader:
         self.folder, self.source = folder, source
         self.faults: list[Fault] = []
         self.attachments: dict[str, bytes] = {}
+        for name in _OF_A_SERIES:
+            if self.document.pop(name, None) is not None:
+                self._fault(name, f"makes this a series of runs; use spheru series {source}")
         self._take_in_tables()
         self.good, found = check(Document, self.document)
         self.faults.extend(found)

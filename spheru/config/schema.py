@@ -6,6 +6,7 @@ from typing import Any, Final, get_args
 
 from spheru.config.models import Document, Record
 from spheru.config.records import PLAIN
+from spheru.config.series import SeriesTables
 from spheru.material.record import Mark
 
 __all__ = ["settings_schema"]
@@ -33,6 +34,9 @@ def settings_schema() -> dict[str, Any]:
     definitions = schema.pop("$defs")
     for name, shape in definitions.items():
         definitions[name] = _with_file(shape)
+    series = _without_null(SeriesTables.model_json_schema(by_alias=True))
+    definitions |= series.pop("$defs")
+    schema["properties"] |= series["properties"]
     for name, shape in record.pop("$defs").items():
         definitions[name] = _overridable(_with_file(shape))
     material = definitions["Material"]

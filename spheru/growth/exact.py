@@ -8,7 +8,8 @@ from __future__ import annotations
 
 import math
 from concurrent.futures import ThreadPoolExecutor
-from typing import TYPE_CHECKING, Final, TypeAlias
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, Any, Final, TypeAlias
 
 import numpy as np
 
@@ -30,23 +31,26 @@ if TYPE_CHECKING:
     from spheru.births import Births
     from spheru.image.frame import Frame
 
-__all__ = ["memory_needed", "tessellate"]
+__all__ = ["Population", "Window", "memory_needed", "tessellate"]
+
+Window: TypeAlias = tuple[slice, ...]
 
 # Parts of the work that the threads take one after the other.
 SLABS: Final = 32
 
-# Edges of the blocks z, y, x from top to leaf by the least grain size in pixels they are for: the
-# fastest of those tried. Longer along x, so that whole cache lines are written.
+# Edges z, y, x of the tiles that are put together in the cache, of the blocks that candidates are
+# gathered for, and so on to the leaves, by the least grain size in pixels they are for: the fastest
+# of those tried. Longer along x, so that whole cache lines are written.
 Edges: TypeAlias = tuple[tuple[int, int, int], ...]
 FLAT_BLOCKS: Final[dict[float, Edges]] = {
-    60: ((1, 128, 128), (1, 32, 64), (1, 16, 32)),
-    16: ((1, 64, 64), (1, 16, 32)),
-    0: ((1, 16, 32), (1, 8, 16)),
+    60: ((1, 128, 128), (1, 128, 128), (1, 32, 64), (1, 16, 32)),
+    16: ((1, 128, 128), (1, 64, 64), (1, 16, 32)),
+    0: ((1, 64, 128), (1, 16, 32), (1, 8, 16)),
 }
 SOLID_BLOCKS: Final[dict[float, Edges]] = {
-    16: ((32, 32, 32), (8, 16, 32), (4, 8, 16)),
-    8: ((16, 16, 16), (8, 8, 8)),
-    0: ((16, 16, 16), (8, 8, 8), (4, 4, 8)),
+    16: ((32, 32, 64), (32, 32, 32), (8, 16, 16), (4, 8, 8)),
+    8: ((16, 16, 128), (16, 16, 16), (8, 8, 16), (4, 8, 8)),
+    0: ((16, 16, 128), (16, 16, 16), (8, 8, 8), (4, 4, 8)),
 }
 
 
@@ -58,6 +62,7 @@ def tessellate(
     arrival: bool = False,
     threads: int | None = None,
     period_z: float | None = None,
+    window: Window | None = None,
     progress: Callable[[float], None] | None = None,
 ) -> LabelImage:
     r"""Give each pixel to the birth whose front arrives first.
@@ -82,19 +87,23 @@ def tessellate(
         Number of threads, all where None. The result does not depend on it.
     period_z : float, optional
         For a section: period of the sample across the plane [m]; None where it has none.
+    window : tuple of slice, optional
+        Part of the frame to grow, a slice of whole pixels per axis; all where it is None. To grow
+        many windows of one frame see `Population`.
     progress : callable, optional
         Called with the share of the work done, 0 to 1, some twenty times.
 
     Returns
     -------
     image : LabelImage
-        Labels, births and, if asked for, arrival [m]. Of a section only those births are kept
-        that own a pixel, and the labels count these.
+        Labels, births and, if asked for, arrival [m]. Of a whole section only those births are
+        kept that own a pixel, and the labels count these. A window has the births, labels and
+        arrival of the same part of the whole, byte for byte, and the frame of the part.
 
     Raises
     ------
     ValidityError
-        If births and frame do not go together or `end` or `period_z` makes no sense.
+        If births and frame do not go together or `end`, `period_z` or `window` makes no sense.
 
     Notes
     -----
@@ -120,34 +129,174 @@ def tessellate(
     >>> tessellate(births, frame, end=1.5e-6).labels.tolist()
     [[1, 1, 0, 0, 2]]
     """
-    section = frame.plane_z is not None
-    _check(births, frame, end, period_z)
-    labels = _empty(frame.shape)
-    times = np.empty(frame.shape, np.float32) if arrival else None
-    place, birth, period = _pixel_units(births, frame, period_z)
-    end_pixels = end / frame.pixel
-    if len(births) == 0 or end_pixels < birth.min():
-        labels.fill(0)
-        if times is not None:
-            times.fill(np.inf)
-    else:
-        grid = (1, *frame.shape)[-3:]
-        with kernel_threads(threads) as count:
-            _grow(
-                place,
-                birth,
-                period,
-                end_pixels,
-                frame.pixel,
-                labels.reshape(grid),
-                None if times is None else times.reshape(grid),
-                count,
-                progress,
-            )
-    if section:
-        with kernel_threads(threads) as count:
-            births = _keep_owners(births, labels, count)
-    return LabelImage(labels=labels, frame=frame, arrival=times, births=births)
+    population = Population.of(births, frame, period_z=period_z)
+    labels = _memory(None, _part(frame, window)[1], np.uint32)
+    image = population.tessellate(
+        window=window, end=end, arrival=arrival, threads=threads, progress=progress, out=labels
+    )
+    if frame.plane_z is None or window is not None:
+        return image
+    with kernel_threads(threads) as count:
+        kept = _keep_owners(births, labels, count)
+    return replace(image, births=kept)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Population:
+    """Births made ready for a frame: sorted once, to grow any number of windows of it.
+
+    Attributes
+    ----------
+    births : Births
+        Nuclei; row i owns label i + 1.
+    frame : Frame
+        The whole grid.
+    period : ndarray of float64, shape (3,)
+        Periods along z, y, x in pixels, 0 where there is none.
+    low, cell, dims : ndarray, shape (3,)
+        Corner of the grid of cells and edges of a cell in pixels; numbers of cells.
+    start, place, row : ndarray
+        Births sorted into cells, as `spheru.growth.kernels.cells_kernel` leaves them.
+    blocks : ndarray of int64, shape (levels, 3)
+        Edges of the blocks of pixels, from the top ones to the leaves.
+    """
+
+    births: Births
+    frame: Frame
+    period: NDArray[np.float64]
+    low: NDArray[np.float64]
+    cell: NDArray[np.float64]
+    dims: NDArray[np.int64]
+    start: NDArray[np.int64]
+    place: NDArray[np.float64]
+    row: NDArray[np.int32]
+    blocks: NDArray[np.int64]
+
+    @classmethod
+    def of(cls, births: Births, frame: Frame, *, period_z: float | None = None) -> Population:
+        """Make births ready for a frame.
+
+        Parameters
+        ----------
+        births, frame, period_z
+            As in `tessellate`.
+
+        Returns
+        -------
+        population : Population
+            Births in cells.
+
+        Raises
+        ------
+        ValidityError
+            If births and frame do not go together or `period_z` makes no sense.
+        """
+        _check(births, frame, period_z)
+        place, birth, period = _pixel_units(births, frame, period_z)
+        low, cell, dims = _cells(place, period)
+        start = np.zeros(int(np.prod(dims)) + 2, np.int64)
+        sorted_place = np.empty((4, len(births)))
+        row = np.empty(len(births), np.int32)
+        cells_kernel(place, birth, low, cell, dims, start, sorted_place, row)
+        return cls(
+            births=births,
+            frame=frame,
+            period=period,
+            low=low,
+            cell=cell,
+            dims=dims,
+            start=start,
+            place=sorted_place,
+            row=row,
+            blocks=_blocks(_grid(frame), place),
+        )
+
+    def tessellate(
+        self,
+        *,
+        window: Window | None = None,
+        end: float = math.inf,
+        arrival: bool = False,
+        threads: int | None = None,
+        progress: Callable[[float], None] | None = None,
+        out: NDArray[np.uint32] | None = None,
+        arrival_out: NDArray[np.float32] | None = None,
+    ) -> LabelImage:
+        """Give each pixel of a window to the birth whose front arrives first.
+
+        Parameters
+        ----------
+        window, end, arrival, threads, progress
+            As in `tessellate`.
+        out : ndarray of uint32, shape of the window, C-contiguous, optional
+            Memory for the labels, which spares the price of fresh memory; what is returned looks
+            at it.
+        arrival_out : ndarray of float32, shape of the window, C-contiguous, optional
+            The same for the arrival.
+
+        Returns
+        -------
+        image : LabelImage
+            Labels (row + 1, of sections too), all births and, if asked for, arrival [m].
+
+        Raises
+        ------
+        ValidityError
+            If `end`, `window`, `out` or `arrival_out` makes no sense.
+        """
+        if math.isnan(end):
+            raise ValidityError("tessellate: expected a grown length [m] as end, got nan")
+        corner, shape, frame = _part(self.frame, window)
+        labels = _memory(out, shape, np.uint32)
+        times = _memory(arrival_out, shape, np.float32) if arrival else None
+        birth = self.place[3]
+        end_pixels = end / frame.pixel
+        if len(birth) == 0 or end_pixels < birth.min():
+            labels.fill(0)
+            if times is not None:
+                times.fill(np.inf)
+        else:
+            with kernel_threads(threads) as count:
+                self._grow(corner, end_pixels, labels, times, count, progress)
+        return LabelImage(labels=labels, frame=frame, arrival=times, births=self.births)
+
+    def _grow(
+        self,
+        start: tuple[int, ...],
+        end: float,
+        labels: NDArray[np.uint32],
+        times: NDArray[np.float32] | None,
+        threads: int,
+        progress: Callable[[float], None] | None,
+    ) -> None:
+        shape = np.array(_grid(self.frame), np.int64)
+        corner = np.array((0, *start)[-3:], np.int64)
+        size = np.array((1, *labels.shape)[-3:], np.int64)
+        top = self.blocks[0]
+        tops = int(np.prod((corner + size - 1) // top + 1 - corner // top))
+        floor = float(self.place[3].min())
+        squared = times is None and bool(floor == self.place[3].max())
+        halves = squared and math.isinf(end) and abs(floor) < 1e6 and self._on_halves()
+        flat = labels.reshape(-1)
+        arrivals = np.empty(0, np.float32) if times is None else times.reshape(-1)
+
+        def slab(begin: int, stop: int) -> None:
+            tessellate_kernel(
+                begin, stop, self.place, self.row, self.start, self.low, self.cell, self.dims,
+                self.period, floor, shape, corner, size, self.blocks, squared, halves, end,
+                self.frame.pixel, times is not None, _skip(flat), flat, _skip(arrivals), arrivals,
+            )  # fmt: skip
+
+        marks = np.linspace(0, tops, SLABS + 1).astype(np.int64)
+        _on_threads(slab, marks, threads, progress)
+
+    def _on_halves(self) -> bool:
+        """Whether places and periods are whole multiples of half a pixel."""
+        for values in (self.period, self.place[:3, :1000], self.place[:3]):
+            doubled = 2.0 * values
+            if not np.array_equal(doubled, np.rint(doubled)):
+                return False
+        return True
 
 
 def memory_needed(frame: Frame, *, arrival: bool = False) -> int:
@@ -175,7 +324,7 @@ def memory_needed(frame: Frame, *, arrival: bool = False) -> int:
     return frame.pixels * (8 if arrival else 4)
 
 
-def _check(births: Births, frame: Frame, end: float, period_z: float | None) -> None:
+def _check(births: Births, frame: Frame, period_z: float | None) -> None:
     wanted = 3 if frame.plane_z is not None else frame.dimension
     if births.dimension != wanted:
         raise ValidityError(
@@ -184,41 +333,76 @@ def _check(births: Births, frame: Frame, end: float, period_z: float | None) -> 
         )
     if len(births) >= 2**31 - 1:
         raise ValidityError(f"tessellate: {len(births)} births are more than labels can count")
-    if math.isnan(end):
-        raise ValidityError("tessellate: expected a grown length [m] as end, got nan")
     if period_z is not None and frame.plane_z is None:
         raise ValidityError("tessellate: period_z is for a plane section only")
     if period_z is not None and not (math.isfinite(period_z) and period_z > 0):
         raise ValidityError(f"tessellate: expected a period_z above 0 m, got {period_z}")
 
 
-def _empty(shape: tuple[int, ...]) -> NDArray[np.uint32]:
-    """Labels that begin at a cache line, so that the rows of blocks fill whole lines."""
+def _grid(frame: Frame) -> tuple[int, ...]:
+    return (1, *frame.shape)[-3:]
+
+
+def _part(frame: Frame, window: Window | None) -> tuple[tuple[int, ...], tuple[int, ...], Frame]:
+    """First pixel, numbers of pixels and frame of a window."""
+    if window is None:
+        return (0,) * frame.dimension, frame.shape, frame
+    if len(window) != frame.dimension:
+        raise ValidityError(
+            f"tessellate: expected a window of {frame.dimension} slices, got {len(window)}"
+        )
+    spans = [part.indices(count) for part, count in zip(window, frame.shape, strict=True)]
+    if any(step != 1 or stop <= start for start, stop, step in spans):
+        raise ValidityError(
+            f"tessellate: expected a window of at least one pixel without steps within "
+            f"{frame.shape}, got {window}"
+        )
+    corner = tuple(start for start, _, _ in spans)
+    shape = tuple(stop - start for start, stop, _ in spans)
+    return corner, shape, frame.crop(corner, shape)
+
+
+def _memory(
+    given: NDArray[Any] | None, shape: tuple[int, ...], dtype: type[np.generic]
+) -> NDArray[Any]:
+    """Check the given memory, else take fresh one at a cache line, so that rows fill lines."""
+    if given is not None:
+        if given.shape != shape or given.dtype != dtype or not given.flags.carray:
+            raise ValidityError(
+                f"tessellate: expected contiguous memory of {np.dtype(dtype)} and shape {shape}, "
+                f"got {given.dtype} and {given.shape}"
+            )
+        return given
     count = math.prod(shape)
-    room = np.empty(count + 15, np.uint32)
-    skip = -room.ctypes.data % 64 // 4
+    room = np.empty(count + 15, dtype)
+    skip = _skip(room)
     return room[skip : skip + count].reshape(shape)
+
+
+def _skip(array: NDArray[Any]) -> int:
+    """Count the values before the first that begins a cache line."""
+    return int(-array.ctypes.data % 64 // 4)
 
 
 def _pixel_units(
     births: Births, frame: Frame, period_z: float | None
 ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]:
-    """Places (n, 3), birth lengths (n,) and periods (3,) in pixels; 0 for no period."""
-    place = np.full((len(births), 3), 0.5)
+    """Places (3, n), birth lengths (n,) and periods (3,) in pixels; 0 for no period."""
+    place = np.full((3, len(births)), 0.5)
     period = np.zeros(3)
     axes = frame.dimension
     for axis in range(axes):
         at = 3 - axes + axis
         column = births.dimension - axes + axis
-        place[:, at] = (births.position[:, column] - frame.origin[axis]) / frame.pixel
+        place[at] = (births.position[:, column] - frame.origin[axis]) / frame.pixel
         period[at] = frame.shape[axis] if frame.periodic[axis] else 0.0
     if frame.plane_z is not None:
-        place[:, 0] = (births.position[:, 0] - frame.plane_z) / frame.pixel + 0.5
+        place[0] = (births.position[:, 0] - frame.plane_z) / frame.pixel + 0.5
         period[0] = 0.0 if period_z is None else period_z / frame.pixel
     for k in np.flatnonzero(period):
-        outside = (place[:, k] < 0) | (place[:, k] >= period[k])
-        wrapped = np.mod(place[outside, k], period[k])
-        place[outside, k] = np.where(wrapped < period[k], wrapped, 0.0)  # -1e-20 gives the period
+        outside = (place[k] < 0) | (place[k] >= period[k])
+        wrapped = np.mod(place[k, outside], period[k])
+        place[k, outside] = np.where(wrapped < period[k], wrapped, 0.0)  # -1e-20 gives the period
     return place, births.grown_length / frame.pixel, period
 
 
@@ -226,10 +410,12 @@ def _cells(
     place: NDArray[np.float64], period: NDArray[np.float64]
 ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.int64]]:
     """Corner, edges and numbers of cells with about two births each."""
-    low = np.where(period > 0, 0.0, place.min(axis=0))
-    extent = np.where(period > 0, period, place.max(axis=0) - low)
+    if place.shape[1] == 0:
+        return np.zeros(3), np.ones(3), np.ones(3, np.int64)
+    low = np.where(period > 0, 0.0, place.min(axis=1))
+    extent = np.where(period > 0, period, place.max(axis=1) - low)
     dims = np.ones(3, np.int64)
-    wanted = len(place) / 2
+    wanted = place.shape[1] / 2
     axes = [axis for axis in np.argsort(extent) if extent[axis] > 0]
     # Thin axes first: one that is thinner than a cell leaves the cells to the others.
     while axes and wanted > 1:
@@ -242,47 +428,13 @@ def _cells(
 
 def _blocks(grid: tuple[int, ...], place: NDArray[np.float64]) -> NDArray[np.int64]:
     """Edges of the blocks in pixels, from the top ones to the leaves."""
-    extent = np.ptp(place, axis=0)
+    births = place.shape[1]
+    extent = np.ptp(place, axis=1) if births else np.zeros(3)
     axes = extent > 1.0
-    size = (float(np.prod(extent[axes])) / len(place)) ** (1 / max(1, int(axes.sum())))
+    size = (float(np.prod(extent[axes])) / max(1, births)) ** (1 / max(1, int(axes.sum())))
     choices = FLAT_BLOCKS if grid[0] == 1 else SOLID_BLOCKS
     edges = next(edges for least, edges in choices.items() if size >= least)
     return np.array(edges, np.int64)
-
-
-def _grow(
-    place: NDArray[np.float64],
-    birth: NDArray[np.float64],
-    period: NDArray[np.float64],
-    end: float,
-    pixel: float,
-    labels: NDArray[np.uint32],
-    times: NDArray[np.float32] | None,
-    threads: int,
-    progress: Callable[[float], None] | None,
-) -> None:
-    low, cell, dims = _cells(place, period)
-    start = np.zeros(int(np.prod(dims)) + 2, np.int64)
-    population = np.empty((4, len(place)))
-    row = np.empty(len(place), np.int32)
-    cells_kernel(place, birth, low, cell, dims, start, population, row)
-    blocks = _blocks(labels.shape, place)
-    tops = math.prod(-(-n // int(b)) for n, b in zip(labels.shape, blocks[0], strict=True))
-    floor = float(birth.min())
-    squared = times is None and bool(floor == birth.max())
-    flat = labels.reshape(-1)
-    nowhere = np.empty(0, np.float32)
-    arrivals = nowhere if times is None else times.reshape(-1)
-    shape = np.array(labels.shape, np.int64)
-
-    def slab(begin: int, stop: int) -> None:
-        tessellate_kernel(
-            begin, stop, population, row, start, low, cell, dims, period, floor,
-            shape, blocks, squared, end, pixel, times is not None, flat, arrivals,
-        )  # fmt: skip
-
-    marks = np.linspace(0, tops, SLABS + 1).astype(np.int64)
-    _on_threads(slab, marks, threads, progress)
 
 
 def _on_threads(

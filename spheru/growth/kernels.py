@@ -10,9 +10,12 @@ index of the birth (int32).
 from __future__ import annotations
 
 import math
-from typing import TYPE_CHECKING, TypeAlias
+from typing import TYPE_CHECKING, Any, TypeAlias
 
 import numpy as np
+from llvmlite import ir  # type: ignore[import-untyped]
+from numba import types
+from numba.extending import intrinsic, overload
 
 from spheru.jit import kernel
 
@@ -45,8 +48,8 @@ def cells_kernel(
 
     Parameters
     ----------
-    place : ndarray of float64, shape (n, 3)
-        Places of the nuclei in pixels, axis order z, y, x.
+    place : ndarray of float64, shape (3, n)
+        Places z, y, x of the nuclei in pixels.
     birth : ndarray of float64, shape (n,)
         Birth lengths in pixels.
     low, cell : ndarray of float64, shape (3,)
@@ -60,12 +63,12 @@ def cells_kernel(
     row_out : ndarray of int32, shape (n,)
         Row of each sorted birth.
     """
-    n = place.shape[0]
+    n = place.shape[1]
     which = np.empty(n, np.int64)
     for i in range(n):
         c = 0
         for k in range(3):
-            index = int((place[i, k] - low[k]) / cell[k])
+            index = int((place[k, i] - low[k]) / cell[k])
             index = min(max(index, 0), dims[k] - 1)
             c = c * dims[k] + index
         which[i] = c
@@ -76,7 +79,7 @@ def cells_kernel(
         at = start_out[which[i] + 1]
         start_out[which[i] + 1] += 1
         for k in range(3):
-            population_out[k, at] = place[i, k]
+            population_out[k, at] = place[k, i]
         population_out[3, at] = birth[i]
         row_out[at] = i
 
@@ -216,36 +219,57 @@ def _prune(
     squared: bool,
     end: Real,
     slack: Real,
+    ahead: Real,
     value: F4,
     radius: F4,
+    rank: F4,
     flag: I4,
     pick: I4,
 ) -> int:
     """Keep the candidates that may win a pixel of a block, one list further; return their number.
 
-    The winner at the centre of the block is held against each of the others. Loops run on to the
-    next multiple of eight, over what earlier lists left there: so they stay whole vectors.
+    The winner at the centre of the block (or one that nearly wins) is held against each of the
+    others. Loops run on to the next multiple of eight, over what earlier lists left there: so they
+    stay whole vectors. `ahead` lifts all values above 0, where floats sort as their bits do.
     """
     cz, cy, cx = block[0], block[1], block[2]
     hz, hy, hx = block[3], block[4], block[5]
     hh = hz * hz + hy * hy + hx * hx
     h = np.sqrt(hh)
     eights = (k + 7) // 8 * 8
-    best = np.float32(3e30)
-    i = 0
     if squared:
         for j in range(eights):
             dz = cz - near[source, 0, j]
             dy = cy - near[source, 1, j]
             dx = cx - near[source, 2, j]
             value[j] = dz * dz + dy * dy + dx * dx
-        for j in range(k):
-            if value[j] < best:
-                best = value[j]
-                i = j
+            rank[j] = value[j]
+    else:
+        for j in range(eights):
+            dz = cz - near[source, 0, j]
+            dy = cy - near[source, 1, j]
+            dx = cx - near[source, 2, j]
+            r = np.sqrt(dz * dz + dy * dy + dx * dx)
+            value[j] = r + near[source, 3, j]
+            rank[j] = value[j] + ahead
+            radius[j] = np.float32(1.0) / (r + np.float32(1e-20))
+    # The low bits make room for the number of the candidate, so that one minimum finds both.
+    low = 255
+    while low < k:
+        low = 2 * low + 1
+    number = np.int32(low)
+    bits = rank.view(np.int32)
+    least = np.int32(2147483647)
+    for j in range(k):
+        key = np.int32((bits[j] & ~number) | np.int32(j))
+        least = min(least, key)
+    i = int(least & number)
+    flag[0] = least & ~number
+    best = value[i]
+    if squared:
         reach = np.sqrt(end) + h
         reach = reach * reach + slack
-        if best > reach:
+        if flag.view(np.float32)[0] > reach:
             return 0
         z, y, x = near[source, 0, i], near[source, 1, i], near[source, 2, i]
         limit = min(best + slack, reach)
@@ -258,18 +282,7 @@ def _prune(
             )
             flag[j] = np.int32(value[j] - gain <= limit)
     else:
-        for j in range(eights):
-            dz = cz - near[source, 0, j]
-            dy = cy - near[source, 1, j]
-            dx = cx - near[source, 2, j]
-            r = np.sqrt(dz * dz + dy * dy + dx * dx)
-            value[j] = r + near[source, 3, j]
-            radius[j] = np.float32(1.0) / (r + np.float32(1e-20))
-        for j in range(k):
-            if value[j] < best:
-                best = value[j]
-                i = j
-        if best > end + h + slack:
+        if flag.view(np.float32)[0] - ahead > end + h + slack:
             return 0
         r = radius[i]
         z = (cz - near[source, 0, i]) * r
@@ -462,6 +475,62 @@ def _leaf(
 
 
 @kernel()
+def _pair(
+    near: F4,
+    level: int,
+    label: I4,
+    z0: Real,
+    y0: Real,
+    x0: Real,
+    pz: F4,
+    py: F4,
+    px: F4,
+    squared: bool,
+    gap: F4,
+    owner: I4,
+) -> None:
+    """Find, for the pixels of a leaf, the owner of the two there are, and by how much it leads."""
+    az, ay, ax = near[level, 0, 0] - z0, near[level, 1, 0] - y0, near[level, 2, 0] - x0
+    bz, by, bx = near[level, 0, 1] - z0, near[level, 1, 1] - y0, near[level, 2, 1] - x0
+    la, lb = label[0], label[1]
+    if squared:
+        two = np.float32(2.0)
+        t = (az * az + ay * ay + ax * ax) - (bz * bz + by * by + bx * bx)
+        gz, gy, gx = two * (bz - az), two * (by - ay), two * (bx - ax)
+        for p in range(owner.size):
+            lead = t + gz * pz[p] + gy * py[p] + gx * px[p]
+            owner[p] = la if lead <= np.float32(0.0) else lb
+            gap[p] = abs(lead)
+    else:
+        t = near[level, 3, 0] - near[level, 3, 1]
+        for p in range(owner.size):
+            dz, dy, dx = pz[p] - az, py[p] - ay, px[p] - ax
+            ez, ey, ex = pz[p] - bz, py[p] - by, px[p] - bx
+            lead = t + np.sqrt(dz * dz + dy * dy + dx * dx) - np.sqrt(ez * ez + ey * ey + ex * ex)
+            owner[p] = la if lead <= np.float32(0.0) else lb
+            gap[p] = abs(lead)
+
+
+@kernel()
+def _covers(
+    near: F4,
+    level: int,
+    block: F4,
+    squared: bool,
+    limit: Real,
+    slack: Real,
+) -> bool:
+    """Tell whether the first candidate has taken the whole block before the end."""
+    reach2 = np.float32(0.0)
+    for axis in range(3):
+        d = abs(block[axis] - near[level, axis, 0]) + block[axis + 3]
+        reach2 += d * d
+    if squared:
+        return bool(reach2 + slack < limit)
+    return bool(np.sqrt(reach2) + near[level, 3, 0] + slack < limit)
+
+
+@kernel()
 def _winner(
     z: float,
     y: float,
@@ -513,6 +582,89 @@ def _winner(
 
 
 @kernel()
+def _by_label(
+    near: F4,
+    level: int,
+    label: I4,
+    k: int,
+) -> None:
+    """Sort the few candidates of a leaf by label, so that the first of equal ones wins."""
+    for m in range(1, k):
+        z, y, x, last = near[level, 0, m], near[level, 1, m], near[level, 2, m], label[m]
+        j = m - 1
+        while j >= 0 and label[j] > last:
+            for axis in range(3):
+                near[level, axis, j + 1] = near[level, axis, j]
+            label[j + 1] = label[j]
+            j -= 1
+        near[level, 0, j + 1] = z
+        near[level, 1, j + 1] = y
+        near[level, 2, j + 1] = x
+        label[j + 1] = last
+
+
+def _stream(tile: Any, take: int, out: Any, put: int, count: int, skip: int) -> None:  # noqa: ARG001 (matters to the compiled twin)
+    """Copy a row, past the cache where this is compiled: nobody reads it soon.
+
+    Such a store does not fetch what it overwrites, so that scattered rows come at the speed of a
+    fill. The locks by which threads hand over their work order these stores before it.
+    """
+    out[put : put + count] = tile[take : take + count]
+
+
+@overload(_stream)
+def _stream_compiled(tile: Any, take: Any, out: Any, put: Any, count: Any, skip: Any) -> Any:  # noqa: ARG001 (numba's way)
+    def body(tile: Any, take: Any, out: Any, put: Any, count: Any, skip: Any) -> None:
+        stop = put + count
+        whole = min(put + (skip - put) % 16, stop)
+        last = whole + (stop - whole) // 16 * 16
+        take -= put
+        for at in range(put, whole):
+            _store_one(tile, take + at, out, at)
+        for at in range(whole, last, 8):
+            _store_eight(tile, take + at, out, at)
+        for at in range(last, stop):
+            _store_one(tile, take + at, out, at)
+
+    return body
+
+
+def _streaming_store(count: int) -> Any:
+    """Write code that moves some values of 4 bytes, to a multiple of their common size."""
+
+    def generate(context: Any, builder: Any, signature: Any, values: Any) -> Any:
+        kind = ir.IntType(32) if count == 1 else ir.VectorType(ir.IntType(32), count)
+        source, target = (
+            builder.bitcast(
+                builder.gep(
+                    context.make_array(signature.args[k])(context, builder, values[k]).data,
+                    [values[k + 1]],
+                ),
+                kind.as_pointer(),
+            )
+            for k in (0, 2)
+        )
+        store = builder.store(builder.load(source, align=4), target, align=4 * count)
+        hint = builder.module.add_metadata([ir.Constant(ir.IntType(32), 1)])
+        store.set_metadata("nontemporal", hint)
+        return context.get_dummy_value()
+
+    return generate
+
+
+def _one(_context: Any, tile: Any, take: Any, out: Any, put: Any) -> Any:
+    return types.void(tile, take, out, put), _streaming_store(1)
+
+
+def _eight(_context: Any, tile: Any, take: Any, out: Any, put: Any) -> Any:
+    return types.void(tile, take, out, put), _streaming_store(8)
+
+
+_store_one: Any = intrinsic(_one)
+_store_eight: Any = intrinsic(_eight)
+
+
+@kernel()
 def tessellate_kernel(
     begin: int,
     stop: int,
@@ -525,12 +677,17 @@ def tessellate_kernel(
     period: F8,
     floor: float,
     shape: I8,
+    corner: I8,
+    window: I8,
     blocks: I8,
     squared: bool,
+    halves: bool,
     end: float,
     pixel: float,
     with_arrival: bool,
+    skip: int,
     labels_out: U4,
+    arrival_skip: int,
     arrival_out: F4,
 ) -> None:
     """Give each pixel to the birth whose front arrives first; ties go to the lowest row.
@@ -538,7 +695,7 @@ def tessellate_kernel(
     Parameters
     ----------
     begin, stop : int
-        Range of the top blocks to do, counted z, y, x.
+        Range of the tiles that the window touches, counted z, y, x.
     population, row, start, low, cell, dims
         Sorted births as `cells_kernel` leaves them.
     period : ndarray of float64, shape (3,)
@@ -546,26 +703,37 @@ def tessellate_kernel(
     floor : float
         Smallest birth length in pixels.
     shape : ndarray of int64, shape (3,)
-        Numbers of pixels nz, ny, nx.
+        Numbers of pixels of the whole grid. Tiles count from its corner, so that a window has
+        the same bytes as the same part of the whole.
+    corner, window : ndarray of int64, shape (3,)
+        First pixel of the window and its numbers of pixels nz, ny, nx.
     blocks : ndarray of int64, shape (levels, 3)
-        Edges of the blocks in pixels from top to leaf, each a multiple of the next.
+        Edges in pixels of the tiles, which are put together in the cache and written out as a
+        whole, of the blocks that candidates are gathered for, and so on to the leaves; each is a
+        multiple of the next.
     squared : bool
         Whether squared distances do: all birth lengths are equal, and no arrival is wanted.
+    halves : bool
+        Whether, moreover, places and periods are whole multiples of half a pixel and there is no
+        end: squared distances are exact then, and equal where they seem so.
     end : float
         Grown length in pixels after which no pixel is taken; inf for none.
     pixel : float
         Pixel edge [m].
     with_arrival : bool
         Whether `arrival_out` is filled.
-    labels_out : ndarray of uint32, shape (nz * ny * nx,)
+    skip, arrival_skip : int
+        Values of `labels_out` and `arrival_out` before the first cache line that is all theirs.
+    labels_out : ndarray of uint32, shape (nz * ny * nx,) of the window
         Row + 1 of the owner; 0 where nothing arrives by `end`.
-    arrival_out : ndarray of float32, shape (nz * ny * nx,)
+    arrival_out : ndarray of float32, the same shape
         Grown length at arrival [m]; inf where the label is 0.
     """
-    none = np.float32(0.0)
-    one, two, three, four = np.uint64(1), np.uint64(2), np.uint64(3), np.uint64(4)
     levels = blocks.shape[0]
-    by, bx = (shape[1] - 1) // blocks[0, 1] + 1, (shape[2] - 1) // blocks[0, 2] + 1
+    tz, ty, tx = blocks[0, 0], blocks[0, 1], blocks[0, 2]
+    high = corner + window
+    fz, fy, fx = corner[0] // tz, corner[1] // ty, corner[2] // tx
+    by, bx = (high[1] - 1) // ty + 1 - fy, (high[2] - 1) // tx + 1 - fx
     lz, ly, lx = blocks[levels - 1, 0], blocks[levels - 1, 1], blocks[levels - 1, 2]
     n = lz * ly * lx
     pz = np.empty(n, np.float32)
@@ -578,19 +746,22 @@ def tessellate_kernel(
         px[p] = p % lx
         pp[p] = pz[p] * pz[p] + py[p] * py[p] + px[p] * px[p]
     best = np.empty(n, np.float32)
-    second = np.empty(n, np.float32)
+    gap = np.empty(n, np.float32)
     owner = np.empty(n, np.int32)
+    tile = np.zeros(tz * ty * tx, np.uint32)
+    tile_times = np.zeros(tz * ty * tx if with_arrival else 1, np.float32)
     room = 256
-    near = np.zeros((levels + 2, 4, room + 8), np.float32)
-    index = np.zeros((levels + 2, room + 8), np.int32)
+    near = np.zeros((levels + 1, 4, room + 8), np.float32)
+    index = np.zeros((levels + 1, room + 8), np.int32)
     value = np.zeros(room + 8, np.float32)
     radius = np.zeros(room + 8, np.float32)
+    rank = np.zeros(room + 8, np.float32)
     flag = np.zeros(room + 8, np.int32)
     pick = np.zeros(room + 8, np.int32)
     label = np.zeros(room + 8, np.int32)
     counts = np.zeros(levels + 1, np.int64)
     depth = 1
-    for level in range(1, levels):
+    for level in range(2, levels):
         depth += (
             (blocks[level - 1, 0] // blocks[level, 0])
             * (blocks[level - 1, 1] // blocks[level, 1])
@@ -603,176 +774,201 @@ def tessellate_kernel(
     span = np.empty((3, 2), np.int64)
     block = np.empty(6, np.float32)
     size = np.empty(3, np.int64)
+    inner = np.empty(3, np.int64)
+    for axis in range(3):
+        inner[axis] = blocks[0, axis] // blocks[1, axis]
     for top in range(begin, stop):
-        stack[0, 0] = 0
-        stack[0, 1] = top // (by * bx) * blocks[0, 0]
-        stack[0, 2] = top // bx % by * blocks[0, 1]
-        stack[0, 3] = top % bx * blocks[0, 2]
-        for axis in range(3):
-            extent = min(blocks[0, axis], shape[axis] - stack[0, axis + 1])
-            centre[axis] = stack[0, axis + 1] + 0.5 * extent
-            half[axis] = 0.5 * (extent - 1)
-        # When will the births about the centre have taken the block? Others come before or never.
-        reach = 0.6 * max(cell[0], cell[1], cell[2])
-        bound = 1e150
-        base = floor
-        everything = False
-        while bound == 1e150 and not everything:
-            everything = _reach(centre, nothing, low, cell, dims, period, reach, span)
-            bound, base = _bound(centre, half, population, start, dims, period, span)
-            reach *= 2.0
-        reach = max(min(bound, end) - floor, 0.0)
-        _reach(centre, half, low, cell, dims, period, reach, span)
-        k = _collect(
-            centre, half, population, start, low, cell, dims, period, span, reach,
-            base, near, index,
-        )  # fmt: skip
-        if k > room:
-            room = 2 * k
-            near = np.zeros((levels + 2, 4, room + 8), np.float32)
-            index = np.zeros((levels + 2, room + 8), np.int32)
-            value = np.zeros(room + 8, np.float32)
-            radius = np.zeros(room + 8, np.float32)
-            flag = np.zeros(room + 8, np.int32)
-            pick = np.zeros(room + 8, np.int32)
-            label = np.zeros(room + 8, np.int32)
+        oz = (fz + top // (by * bx)) * tz
+        oy = (fy + top // bx % by) * ty
+        ox = (fx + top % bx) * tx
+        # What the window shows of the tile.
+        za, zb = max(oz, corner[0]), min(oz + tz, high[0])
+        ya, yb = max(oy, corner[1]), min(oy + ty, high[1])
+        xa, xb = max(ox, corner[2]), min(ox + tx, high[2])
+        for part in range(inner[0] * inner[1] * inner[2]):
+            stack[0, 0] = 1
+            stack[0, 1] = oz + part // (inner[1] * inner[2]) * blocks[1, 0]
+            stack[0, 2] = oy + part // inner[2] % inner[1] * blocks[1, 1]
+            stack[0, 3] = ox + part % inner[2] * blocks[1, 2]
+            if (
+                stack[0, 1] >= zb or stack[0, 1] + blocks[1, 0] <= za
+                or stack[0, 2] >= yb or stack[0, 2] + blocks[1, 1] <= ya
+                or stack[0, 3] >= xb or stack[0, 3] + blocks[1, 2] <= xa
+            ):  # fmt: skip
+                continue
+            for axis in range(3):
+                extent = min(blocks[1, axis], shape[axis] - stack[0, axis + 1])
+                centre[axis] = stack[0, axis + 1] + 0.5 * extent
+                half[axis] = 0.5 * (extent - 1)
+            # When will the births about the centre have taken the block? Others come before or
+            # never.
+            reach = 0.6 * max(cell[0], cell[1], cell[2])
+            bound = 1e150
+            base = floor
+            everything = False
+            while bound == 1e150 and not everything:
+                everything = _reach(centre, nothing, low, cell, dims, period, reach, span)
+                bound, base = _bound(centre, half, population, start, dims, period, span)
+                reach *= 2.0
+            reach = max(min(bound, end) - floor, 0.0)
+            _reach(centre, half, low, cell, dims, period, reach, span)
             k = _collect(
                 centre, half, population, start, low, cell, dims, period, span, reach,
                 base, near, index,
             )  # fmt: skip
-        scale = 0.0
-        for j in range(k):
-            far = abs(near[0, 0, j]) + abs(near[0, 1, j]) + abs(near[0, 2, j]) + abs(near[0, 3, j])
-            scale = max(scale, far)
-        scale += half[0] + half[1] + half[2] + 1.0
-        counts[0] = k
-        slack = np.float32(4e-6 * (scale * scale if squared else scale))
-        close = np.float32(2e-6 * (scale * scale if squared else scale))
-        limit = np.float32(min(end - base, 1e15))
-        if squared:
-            limit = limit * limit
-        held = 1
-        while held > 0:
-            held -= 1
-            level, z0, y0, x0 = stack[held, 0], stack[held, 1], stack[held, 2], stack[held, 3]
-            size[0] = min(blocks[level, 0], shape[0] - z0)
-            size[1] = min(blocks[level, 1], shape[1] - y0)
-            size[2] = min(blocks[level, 2], shape[2] - x0)
-            fours = size[2] - size[2] % 4
-            for axis in range(3):
-                block[axis] = stack[held, axis + 1] + 0.5 * size[axis] - centre[axis]
-                block[axis + 3] = 0.5 * (size[axis] - 1)
-            k = _prune(
-                near,
-                index,
-                level,
-                counts[level],
-                block,
-                squared,
-                limit,
-                slack,
-                value,
-                radius,
-                flag,
-                pick,
-            )
-            counts[level + 1] = k
-            # One owner for the whole block, or none.
-            if k <= 1 and not with_arrival:
-                only = 0
-                whole = True
-                if k == 1:
-                    only = row[index[level + 1, 0]] + 1
-                    reach2 = np.float32(0.0)
-                    for axis in range(3):
-                        d = abs(block[axis] - near[level + 1, axis, 0]) + block[axis + 3]
-                        reach2 += d * d
-                    if squared:
-                        whole = bool(reach2 + slack < limit)
-                    else:
-                        whole = bool(np.sqrt(reach2) + near[level + 1, 3, 0] + slack < limit)
-                if whole:
-                    for z in range(z0, z0 + size[0]):
-                        for y in range(y0, y0 + size[1]):
-                            put = np.uint64((z * shape[1] + y) * shape[2] + x0)
-                            for _ in range(0, fours, 4):
-                                labels_out[put] = only
-                                labels_out[put + one] = only
-                                labels_out[put + two] = only
-                                labels_out[put + three] = only
-                                put += four
-                            for _ in range(fours, size[2]):
-                                labels_out[put] = only
-                                put += one
-                    continue
-            if level + 1 < levels:
-                for z in range((size[0] - 1) // blocks[level + 1, 0], -1, -1):
-                    for y in range((size[1] - 1) // blocks[level + 1, 1], -1, -1):
-                        for x in range((size[2] - 1) // blocks[level + 1, 2], -1, -1):
-                            stack[held, 0] = level + 1
-                            stack[held, 1] = z0 + z * blocks[level + 1, 0]
-                            stack[held, 2] = y0 + y * blocks[level + 1, 1]
-                            stack[held, 3] = x0 + x * blocks[level + 1, 2]
-                            held += 1
-                continue
+            if k > room:
+                room = 2 * k
+                near = np.zeros((levels + 1, 4, room + 8), np.float32)
+                index = np.zeros((levels + 1, room + 8), np.int32)
+                value = np.zeros(room + 8, np.float32)
+                radius = np.zeros(room + 8, np.float32)
+                rank = np.zeros(room + 8, np.float32)
+                flag = np.zeros(room + 8, np.int32)
+                pick = np.zeros(room + 8, np.int32)
+                label = np.zeros(room + 8, np.int32)
+                k = _collect(
+                    centre, half, population, start, low, cell, dims, period, span, reach,
+                    base, near, index,
+                )  # fmt: skip
+            scale = np.float32(0.0)
             for j in range(k):
-                label[j] = row[index[level + 1, j]] + 1
-            # What lacks to two or four candidates is made up by some that never arrive.
-            for j in range(k, k + 3):
+                far = (
+                    abs(near[0, 0, j]) + abs(near[0, 1, j])
+                    + abs(near[0, 2, j]) + abs(near[0, 3, j])
+                )  # fmt: skip
+                scale = max(scale, far)
+            scale = np.float32(scale + half[0] + half[1] + half[2] + 1.0)
+            counts[0] = k
+            exact = halves and scale < np.float32(1000.0)
+            slack = np.float32(4e-6 * (scale * scale if squared else scale))
+            close = np.float32(2e-6 * (scale * scale if squared else scale))
+            ahead = np.float32((base - floor) * (1.0 + 1e-6) + 1e-5 * scale)
+            if exact:
+                close = np.float32(-1.0)
+            limit = np.float32(min(end - base, 1e15))
+            if squared:
+                limit = limit * limit
+            held = 1
+            while held > 0:
+                held -= 1
+                level, z0, y0, x0 = stack[held, 0], stack[held, 1], stack[held, 2], stack[held, 3]
+                size[0] = min(blocks[level, 0], shape[0] - z0)
+                size[1] = min(blocks[level, 1], shape[1] - y0)
+                size[2] = min(blocks[level, 2], shape[2] - x0)
+                if size[0] <= 0 or size[1] <= 0 or size[2] <= 0:
+                    continue
                 for axis in range(3):
-                    near[level + 1, axis, j] = 0.0
-                near[level + 1, 3, j] = 2e30
-                label[j] = 0
-            _leaf(
-                near, level + 1, label, k,
-                np.float32(z0 + 0.5 - centre[0]),
-                np.float32(y0 + 0.5 - centre[1]),
-                np.float32(x0 + 0.5 - centre[2]),
-                pz, py, px, pp, squared, limit, best, second, owner,
-            )  # fmt: skip
-            doubtful = np.int32(0)
-            for p in range(n):
-                doubtful = np.int32(doubtful + np.int32(second[p] - best[p] < close))
-            for z in range(size[0]):
-                for y in range(size[1]):
-                    take = np.uint64((z * ly + y) * lx)
-                    put = np.uint64(((z0 + z) * shape[1] + y0 + y) * shape[2] + x0)
-                    for _ in range(0, fours, 4):
-                        labels_out[put] = owner[take]
-                        labels_out[put + one] = owner[take + one]
-                        labels_out[put + two] = owner[take + two]
-                        labels_out[put + three] = owner[take + three]
-                        put += four
-                        take += four
-                    for _ in range(fours, size[2]):
-                        labels_out[put] = owner[take]
-                        put += one
-                        take += one
-            if with_arrival:
-                for z in range(size[0]):
-                    for y in range(size[1]):
-                        for x in range(size[2]):
-                            p = (z * ly + y) * lx + x
-                            at = ((z0 + z) * shape[1] + y0 + y) * shape[2] + x0 + x
-                            arrival_out[at] = (best[p] + base) * pixel if owner[p] > 0 else np.inf
-            if doubtful > 0:
-                for z in range(size[0]):
-                    for y in range(size[1]):
-                        for x in range(size[2]):
-                            p = (z * ly + y) * lx + x
-                            if second[p] - best[p] < close:
-                                time, winner = _winner(
-                                    z0 + z + 0.5, y0 + y + 0.5, x0 + x + 0.5,
-                                    centre, near, index, level + 1, k, squared,
-                                    best[p] + close + close + (pp[p] if squared else none),
-                                    population, row, period,
-                                )  # fmt: skip
-                                if time > end:
-                                    winner = 0
-                                at = ((z0 + z) * shape[1] + y0 + y) * shape[2] + x0 + x
-                                labels_out[at] = winner
-                                if with_arrival:
-                                    arrival_out[at] = time * pixel if winner > 0 else np.inf
+                    block[axis] = stack[held, axis + 1] + 0.5 * size[axis] - centre[axis]
+                    block[axis + 3] = 0.5 * (size[axis] - 1)
+                k = _prune(
+                    near, index, level - 1, counts[level - 1], block, squared, limit, slack, ahead,
+                    value, radius, rank, flag, pick,
+                )  # fmt: skip
+                counts[level] = k
+                put0 = ((z0 - oz) * ty + y0 - oy) * tx + x0 - ox
+                # One owner for the whole block, or none.
+                if k <= 1 and not with_arrival:
+                    only = np.uint32(0)
+                    if k == 1:
+                        only = np.uint32(row[index[level, 0]] + 1)
+                    if k == 0 or _covers(near, level, block, squared, limit, slack):
+                        for z in range(size[0]):
+                            for y in range(size[1]):
+                                put = np.uint64(put0 + (z * ty + y) * tx)
+                                for x in range(np.uint64(blocks[level, 2])):
+                                    tile[put + x] = only
+                        continue
+                if level + 1 < levels:
+                    for z in range(blocks[level, 0] // blocks[level + 1, 0] - 1, -1, -1):
+                        for y in range(blocks[level, 1] // blocks[level + 1, 1] - 1, -1, -1):
+                            for x in range(blocks[level, 2] // blocks[level + 1, 2] - 1, -1, -1):
+                                stack[held, 0] = level + 1
+                                stack[held, 1] = z0 + z * blocks[level + 1, 0]
+                                stack[held, 2] = y0 + y * blocks[level + 1, 1]
+                                stack[held, 3] = x0 + x * blocks[level + 1, 2]
+                                held += 1
+                    continue
+                for j in range(k):
+                    label[j] = row[index[level, j]] + 1
+                if exact:
+                    _by_label(near, level, label, k)
+                pair = (
+                    k == 2
+                    and not with_arrival
+                    and _covers(near, level, block, squared, limit, slack)
+                )
+                if pair:
+                    _pair(
+                        near, level, label,
+                        np.float32(z0 + 0.5 - centre[0]),
+                        np.float32(y0 + 0.5 - centre[1]),
+                        np.float32(x0 + 0.5 - centre[2]),
+                        pz, py, px, squared, gap, owner,
+                    )  # fmt: skip
+                else:
+                    # What lacks to two or four candidates is made up by some that never arrive.
+                    for j in range(k, k + 3):
+                        for axis in range(3):
+                            near[level, axis, j] = 0.0
+                        near[level, 3, j] = 2e30
+                        label[j] = 0
+                    _leaf(
+                        near, level, label, k,
+                        np.float32(z0 + 0.5 - centre[0]),
+                        np.float32(y0 + 0.5 - centre[1]),
+                        np.float32(x0 + 0.5 - centre[2]),
+                        pz, py, px, pp, squared, limit, best, gap, owner,
+                    )  # fmt: skip
+                    for p in range(n):
+                        gap[p] -= best[p]
+                doubtful = np.int32(0)
+                for p in range(n):
+                    doubtful = np.int32(doubtful + np.int32(gap[p] < close))
+                width = np.uint64(lx)
+                for z in range(lz):
+                    for y in range(ly):
+                        take = np.uint64((z * ly + y) * lx)
+                        put = np.uint64(put0 + (z * ty + y) * tx)
+                        for x in range(width):
+                            tile[put + x] = owner[take + x]
+                if with_arrival:
+                    for z in range(size[0]):
+                        for y in range(size[1]):
+                            for x in range(size[2]):
+                                p = (z * ly + y) * lx + x
+                                at = put0 + (z * ty + y) * tx + x
+                                tile_times[at] = (
+                                    (best[p] + base) * pixel if owner[p] > 0 else np.inf
+                                )
+                if doubtful > 0:
+                    for z in range(size[0]):
+                        for y in range(size[1]):
+                            for x in range(size[2]):
+                                p = (z * ly + y) * lx + x
+                                if gap[p] < close:
+                                    rough = np.float32(3e30)
+                                    if not pair:
+                                        rough = best[p] + close + close
+                                        if squared:
+                                            rough += pp[p]
+                                    time, winner = _winner(
+                                        z0 + z + 0.5, y0 + y + 0.5, x0 + x + 0.5,
+                                        centre, near, index, level, k, squared,
+                                        rough, population, row, period,
+                                    )  # fmt: skip
+                                    if time > end:
+                                        winner = 0
+                                    at = put0 + (z * ty + y) * tx + x
+                                    tile[at] = winner
+                                    if with_arrival:
+                                        tile_times[at] = time * pixel if winner > 0 else np.inf
+        for z in range(za, zb):
+            for y in range(ya, yb):
+                take = ((z - oz) * ty + y - oy) * tx + xa - ox
+                put = ((z - corner[0]) * window[1] + y - corner[1]) * window[2] + xa - corner[2]
+                _stream(tile, take, labels_out, put, xb - xa, skip)
+                if with_arrival:
+                    _stream(tile_times, take, arrival_out, put, xb - xa, arrival_skip)
 
 
 @kernel()

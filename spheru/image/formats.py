@@ -1,4 +1,4 @@
-"""Label images as files: OME-TIFF out and in.
+"""Label images as files: OME-TIFF out, TIFF in; other formats come in by `spheru.image.read`.
 
 The pixel size and the edges travel in the file; how a picture of a map looks is decided in
 `spheru.output.plots`.
@@ -7,27 +7,40 @@ The pixel size and the edges travel in the file; how a picture of a map looks is
 from __future__ import annotations
 
 import json
+import logging
 import math
 import os
 import struct
 import tempfile
 import uuid
 import zlib
+from contextlib import contextmanager
 from decimal import Decimal, InvalidOperation
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final
 from xml.etree import ElementTree as ET
 
 import numpy as np
+from PIL import Image
 
-from spheru.errors import DataError, FolderError
+from spheru.errors import CapacityError, DataError, FolderError, ValidityError
 from spheru.image.frame import Frame
 from spheru.image.label_image import LabelImage
 
 if TYPE_CHECKING:
+    from collections.abc import Iterator
+
     from numpy.typing import NDArray
 
-__all__ = ["read_labels", "write_labels"]
+__all__ = [
+    "any_size",
+    "common_edge",
+    "frame_notes",
+    "labels_on_frame",
+    "read_labels",
+    "refuse_claim",
+    "write_labels",
+]
 
 _FORMAT: Final = "spheru labels 1"
 _NAMESPACE: Final = uuid.uuid5(uuid.NAMESPACE_OID, "spheru")
@@ -35,6 +48,12 @@ _LARGEST_CLASSIC: Final = 2**32 - 2**25  # bytes that a TIFF with 32-bit offsets
 # What the reader raises for damaged files and foreign codecs; its own error is a ValueError.
 _DAMAGED: Final = (ValueError, LookupError, TypeError, RuntimeError, struct.error, zlib.error)
 _POWER: Final = {"m": 0, "cm": -2, "mm": -3, "µm": -6, "μm": -6, "um": -6, "nm": -9, "pm": -12}
+_IMAGEJ_UNITS: Final = {"micron": "um", "microns": "um", "\\u00B5m": "um", "um": "um"}
+_COLOURED: Final = ("RGB", "CMYK", "YCBCR", "CIELAB", "ICCLAB", "ITULAB")
+_DENSEST: Final = 5000  # bytes out of one: more than deflate (1032) or LZW can pack
+
+# What the reader finds odd is no line of its own on the screen; what it cannot read is raised here.
+logging.getLogger("tifffile").addHandler(logging.NullHandler())
 
 
 def write_labels(path: str | Path, image: LabelImage, *, identity: str) -> None:
@@ -70,7 +89,7 @@ def write_labels(path: str | Path, image: LabelImage, *, identity: str) -> None:
         "Creator": "spheru",
         "UUID": str(uuid.uuid5(_NAMESPACE, identity)),
         "Name": "labels of spherulites",
-        "Description": json.dumps(_notes(frame)),
+        "Description": json.dumps(frame_notes(frame)),
     }
     edge = Decimal(repr(frame.pixel)).scaleb(6)
     for axis in axes:
@@ -110,12 +129,15 @@ def write_labels(path: str | Path, image: LabelImage, *, identity: str) -> None:
         raise
 
 
-def read_labels(path: str | Path, *, pixel: float | None = None) -> LabelImage:
+def read_labels(
+    path: str | Path, *, pixel: float | None = None, memory: int | None = None
+) -> LabelImage:
     """Read a label image from a TIFF.
 
     Files of `write_labels` come back whole, but for births and arrival. Those of other programs
     need labels as whole numbers, 0 for what belongs to no spherulite, and the edge of a pixel as
-    OME metadata, or in `pixel`; their edges are taken as cut.
+    OME or ImageJ metadata, or in `pixel`; their edges are taken as cut. A resolution in dots per
+    inch is one for printers and is not taken for a scale.
 
     Parameters
     ----------
@@ -123,6 +145,8 @@ def read_labels(path: str | Path, *, pixel: float | None = None) -> LabelImage:
         The file.
     pixel : float, optional
         Edge of a pixel [m], > 0, for a file that does not tell.
+    memory : int, optional
+        Bytes that the labels may take in memory; no limit without it.
 
     Returns
     -------
@@ -134,37 +158,143 @@ def read_labels(path: str | Path, *, pixel: float | None = None) -> LabelImage:
     DataError
         If the file cannot be read, holds no labels, or tells no pixel size, unequal ones, or
         another one than `pixel`.
+    CapacityError
+        If the labels need more than `memory`; nothing is allocated then.
     """
     import tifffile  # noqa: PLC0415 (as above)
 
+    edge: float | None = None
     try:
         with tifffile.TiffFile(path, _multifile=False) as file:
             xml = file.ome_metadata
-            labels = file.series[0].asarray()
+            series = file.series[0]
+            _refuse_pictures(path, series, ome=bool(xml))
+            refuse_claim(path, series.shape, series.dtype, file.filehandle.size, memory=memory)
+            labels = _pixels_of(path, series)
+            if file.is_imagej:
+                edge = _imagej_edge(str(path), file, series.ndim)
+    except DataError:
+        raise
     except OSError as fault:
         raise DataError(f"{path}: cannot be read ({fault.strerror or fault})") from fault
     except _DAMAGED as fault:
         raise DataError(
-            f"{path}: expected a TIFF of labels, uncompressed or deflated ({fault}); "
-            "save it that way again"
+            f"{path}: expected a TIFF of labels, whole and uncompressed, deflated or LZW "
+            f"({'it is cut off' if isinstance(fault, LookupError) else fault}); save it that way "
+            "again"
         ) from fault
-    if labels.dtype.kind not in "iu" or (labels.dtype.kind == "i" and labels.min() < 0):
-        raise DataError(
-            f"{path}: expected labels as whole numbers of 0 and up, got {labels.dtype}; "
-            "a picture must be segmented first"
-        )
     pixels = None if xml is None else _pixels_element(xml)
-    edge: float | None = None
     more: dict[str, Any] = {}
     if pixels is not None:
         labels, edge, more = _from_ome(str(path), labels, *pixels)
+    return labels_on_frame(path, labels, edge, pixel, **more)
+
+
+def refuse_claim(
+    path: str | Path,
+    shape: tuple[int, ...],
+    dtype: np.dtype[Any],
+    size: int | None,
+    *,
+    memory: int | None,
+) -> None:
+    """Refuse what a header claims where it cannot be labels, before anything is allocated.
+
+    Parameters
+    ----------
+    path : path-like
+        The file, for the message.
+    shape : tuple of int
+        Number of pixels along each axis.
+    dtype : numpy.dtype
+        What a pixel is stored as.
+    size : int or None
+        Size of the file [bytes]; None where it tells nothing.
+    memory : int or None
+        Bytes that the labels may take in memory, with as many again to measure them.
+
+    Raises
+    ------
+    DataError
+        If the array is empty, holds no whole numbers, or is larger than the file can hold.
+    CapacityError
+        If the labels need more memory than there is.
+    """
+    claimed = " x ".join(map(str, shape[::-1]))
+    if math.prod(shape) == 0 or not shape:
+        raise DataError(f"{path}: expected labels, got an image without a pixel ({claimed})")
+    if dtype.kind not in "iub":
+        raise DataError(
+            f"{path}: expected labels as whole numbers of 0 and up, got {dtype}; "
+            "a picture must be segmented first"
+        )
+    if size is not None and math.prod(shape) * dtype.itemsize > _DENSEST * size:
+        raise DataError(
+            f"{path}: the header claims {claimed} pixels, which a file of {size} bytes cannot "
+            "hold; it is damaged: save it again"
+        )
+    needed = 2 * 4 * math.prod(shape)  # uint32, and as much again to work with
+    if memory is not None and needed > memory:
+        raise CapacityError(
+            f"{path}: {claimed} pixels need {needed / 1e9:.1f} GB of memory and "
+            f"{memory / 1e9:.1f} GB are free; measure parts of it as several fields"
+        )
+
+
+def labels_on_frame(
+    path: str | Path,
+    labels: NDArray[Any],
+    edge: float | None,
+    pixel: float | None,
+    **more: Any,
+) -> LabelImage:
+    """Return a label image, once labels and pixel are what they must be.
+
+    Parameters
+    ----------
+    path : path-like
+        The file, for the messages.
+    labels : ndarray
+        What it holds.
+    edge : float or None
+        Edge of a pixel that the file tells [m].
+    pixel : float or None
+        Edge of a pixel that the user gave [m].
+    **more
+        What `Frame` takes besides.
+
+    Returns
+    -------
+    image : LabelImage
+        Labels on their frame.
+
+    Raises
+    ------
+    DataError
+        If there are no 2 or 3 axes of whole numbers of 0 and up, or no pixel, or two of them.
+    ValidityError
+        If the pixel that was given is no length above 0.
+    """
     if labels.ndim not in (2, 3):
         raise DataError(f"{path}: expected 2 or 3 axes of labels, got shape {labels.shape}")
+    refuse_claim(path, labels.shape, labels.dtype, None, memory=None)
+    if labels.dtype.kind == "i" and (lowest := labels.min()) < 0:
+        raise DataError(
+            f"{path}: expected labels as whole numbers of 0 and up, got {lowest} among them; "
+            "give what belongs to no spherulite the label 0"
+        )
+    if labels.dtype.itemsize > 4 and (highest := labels.max()) >= 2**32:
+        raise DataError(
+            f"{path}: expected labels below {2**32}, got {highest}; number them anew from 1"
+        )
+    if pixel is not None and not (math.isfinite(pixel) and pixel > 0):
+        raise ValidityError(f"pixel: expected a length above 0 such as '0.5 um', got {pixel:g} m")
     if edge is None:
         if pixel is None:
             raise DataError(
-                f"{path}: the file does not tell the edge of a pixel; give it with its unit, "
-                "or save the labels as OME-TIFF with PhysicalSizeX and PhysicalSizeY"
+                f"{path}: the file does not tell the edge of a pixel (a resolution in dpi is for "
+                "printers); give it with its unit, such as --pixel '0.5 um', or save the labels "
+                "as OME-TIFF with PhysicalSizeX and PhysicalSizeY"
             )
         edge = pixel
     elif pixel is not None and not math.isclose(edge, pixel, rel_tol=1e-6):
@@ -172,10 +302,109 @@ def read_labels(path: str | Path, *, pixel: float | None = None) -> LabelImage:
             f"{path}: the file says {edge * 1e6:.6g} µm a pixel, but {pixel * 1e6:.6g} µm was "
             "given; leave it out, or correct the file"
         )
+    if labels.dtype.kind == "b":
+        labels = labels.astype(np.uint8)
     return LabelImage(labels=labels, frame=Frame(shape=labels.shape, pixel=edge, **more))
 
 
-def _notes(frame: Frame) -> dict[str, Any]:
+@contextmanager
+def any_size() -> Iterator[None]:
+    """Let Pillow open pictures of any size, where `refuse_claim` has judged it already."""
+    limit, Image.MAX_IMAGE_PIXELS = Image.MAX_IMAGE_PIXELS, None
+    try:
+        yield
+    finally:
+        Image.MAX_IMAGE_PIXELS = limit
+
+
+def common_edge(path: str | Path, edges: dict[str, float | None]) -> float | None:
+    """Return the one edge of a pixel that metadata tell for all axes.
+
+    Parameters
+    ----------
+    path : path-like
+        The file, for the messages.
+    edges : dict of str to float or None
+        Edge of a pixel [m] by axis; None where it is not told.
+
+    Returns
+    -------
+    edge : float or None
+        The edge [m]; None where no axis has one.
+
+    Raises
+    ------
+    DataError
+        If only some axes have one, or they differ.
+    """
+    known = [edge for edge in edges.values() if edge is not None]
+    if len(known) not in (0, len(edges)):
+        missing = ", ".join(f"PhysicalSize{axis}" for axis, edge in edges.items() if edge is None)
+        raise DataError(f"{path}: the file does not tell {missing}; complete its metadata")
+    if known and not all(math.isclose(edge, known[0], rel_tol=1e-6) for edge in known):
+        found = ", ".join(f"{axis} {1e6 * (edge or 0):.6g} µm" for axis, edge in edges.items())
+        raise DataError(
+            f"{path}: expected pixels with equal edges, got {found}; resample the labels (nearest "
+            "neighbour) to the smallest edge first"
+        )
+    return known[-1] if known else None
+
+
+def _refuse_pictures(path: str | Path, series: Any, *, ome: bool) -> None:
+    """Refuse colours, and several pictures in one file; OME's own axes are judged later."""
+    photometric = str(getattr(series.keyframe.photometric, "name", ""))
+    if "S" in series.axes or photometric in _COLOURED:
+        raise DataError(
+            f"{path}: expected labels, one number a pixel, got a colour picture ({photometric}); "
+            "a picture must be segmented first"
+        )
+    if not ome and series.ndim > 2 and (several := set("TC") & set(series.axes)):
+        axis = series.axes.index(min(several))
+        raise DataError(
+            f"{path}: expected one image of labels, got {series.shape[axis]} "
+            f"{'times' if series.axes[axis] == 'T' else 'channels'}; save the one that holds the "
+            "labels alone"
+        )
+
+
+def _pixels_of(path: str | Path, series: Any) -> NDArray[Any]:
+    """Return the pixels of a series; those packed by LZW through Pillow."""
+    try:
+        found: NDArray[Any] = series.asarray()
+    except ValueError as fault:
+        if "imagecodecs" not in str(fault) or series.keyframe.compression.name != "LZW":
+            raise
+        with any_size(), Image.open(path) as picture:
+            pages = []
+            for page in range(len(series.pages)):
+                picture.seek(page)
+                pages.append(np.asarray(picture))
+        found = np.stack(pages).reshape(series.shape)
+        if series.dtype.kind == "u" and found.dtype.kind == "i":  # Pillow has no unsigned 32 bits
+            found = found.view(np.uint32)
+    return found
+
+
+def _imagej_edge(path: str, file: Any, dimension: int) -> float | None:
+    """Return the edge of a pixel [m] that ImageJ's metadata tell."""
+    notes = file.imagej_metadata or {}
+    unit = str(notes.get("unit", ""))
+    power = _POWER.get(_IMAGEJ_UNITS.get(unit, unit))
+    tags = file.pages[0].tags
+    if power is None or "XResolution" not in tags or "YResolution" not in tags:
+        return None
+    edges: dict[str, float | None] = {}
+    if dimension == 3:
+        depth = Decimal(str(notes.get("spacing", 0)))
+        edges["Z"] = float(depth.scaleb(power)) if depth > 0 else None
+    for axis in "YX":
+        pixels, units = tags[f"{axis}Resolution"].value
+        edges[axis] = float((Decimal(units) / Decimal(pixels)).scaleb(power)) if pixels else None
+    return common_edge(path, edges)
+
+
+def frame_notes(frame: Frame) -> dict[str, Any]:
+    """Return what the metadata of a file of labels tell of the frame, but for the pixel."""
     edges = [
         "periodic" if periodic else "closed" if closed else "cut"
         for periodic, closed in zip(frame.periodic, frame.closed, strict=True)
@@ -223,17 +452,7 @@ def _from_ome(
             "save the labels again, in one file"
         )
     labels = labels.reshape(shape)
-    edges = {axis: _edge(attributes, axis) for axis in axes}
-    known = [edge for edge in edges.values() if edge is not None]
-    if len(known) not in (0, len(axes)):
-        missing = ", ".join(f"PhysicalSize{axis}" for axis in axes if edges[axis] is None)
-        raise DataError(f"{path}: the file does not tell {missing}; complete its metadata")
-    if known and not all(math.isclose(edge, known[0], rel_tol=1e-6) for edge in known):
-        found = ", ".join(f"{axis} {1e6 * (edges[axis] or 0):.6g} µm" for axis in axes)
-        raise DataError(
-            f"{path}: expected pixels with equal edges, got {found}; resample the labels (nearest "
-            "neighbour) to the smallest edge first"
-        )
+    edge = common_edge(path, {axis: _edge(attributes, axis) for axis in axes})
     more: dict[str, Any] = {}
     if ours:
         names = [notes["edges"][axis.lower()] for axis in axes]
@@ -243,7 +462,7 @@ def _from_ome(
             "origin": tuple(notes["corner_m"]),
             "plane_z": notes["plane_z_m"],
         }
-    return labels, known[-1] if known else None, more
+    return labels, edge, more
 
 
 def _edge(attributes: dict[str, str], axis: str) -> float | None:

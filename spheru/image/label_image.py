@@ -6,7 +6,7 @@ The product of a simulation and of the reading of a micrograph alike; it knows n
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
@@ -19,6 +19,8 @@ if TYPE_CHECKING:
     from spheru.image.frame import Frame
 
 __all__ = ["LabelImage"]
+
+_BLOCK: Final = 2**18  # pixels looked at in one go
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -76,7 +78,13 @@ class LabelImage:
     @property
     def count(self) -> int:
         """Number of labels that own at least one pixel."""
-        return int(np.count_nonzero(np.bincount(self.labels.ravel())[1:]))
+        if int(self.labels.max()) > self.labels.size:  # a table would outgrow the image
+            return int(np.count_nonzero(np.unique(self.labels)))
+        present = np.zeros(int(self.labels.max()) + 1, dtype=np.bool_)
+        flat = self.labels.ravel()
+        for start in range(0, flat.size, _BLOCK):  # indices are copied as 64 bits
+            present[flat[start : start + _BLOCK]] = True
+        return int(np.count_nonzero(present[1:]))
 
     @property
     def fraction(self) -> float:

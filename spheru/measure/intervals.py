@@ -1,4 +1,4 @@
-"""Numbers with their 95 % intervals, from tiles of one picture or from replicas.
+"""Numbers with their 95 % intervals, from tiles of one picture, from fields or from replicas.
 
 No picture is read here. Spherulites are not resampled one by one: neighbours share their
 boundaries, so a bootstrap over spherulites gives intervals that are too narrow.
@@ -20,7 +20,15 @@ if TYPE_CHECKING:
 
     from numpy.typing import ArrayLike, NDArray
 
-__all__ = ["TILES", "Statistic", "replica_interval", "tile_interval", "tile_waves"]
+__all__ = [
+    "TILES",
+    "Statistic",
+    "Tiles",
+    "field_interval",
+    "replica_interval",
+    "tile_interval",
+    "tile_waves",
+]
 
 TILES: Final = 8  # along each axis
 _LONG: Final = 12.0  # wavelength, in mean spacings of spherulites, from which a wave is used
@@ -95,6 +103,117 @@ def replica_interval(values: ArrayLike) -> Statistic:
     error = float(each.std(ddof=1)) / math.sqrt(each.size)
     half = float(stdtrit(each.size - 1, 0.975)) * error
     return Statistic(value=mean, low=max(mean - half, 0.0), high=mean + half)
+
+
+def field_interval(
+    totals: NDArray[np.float64],
+    statistic: Callable[[NDArray[np.float64]], NDArray[np.float64]],
+) -> Statistic:
+    r"""Return a function of totals with the 95 % interval that the scatter of fields gives.
+
+    The jackknife: with :math:`\theta_i` from all n fields but the i-th one,
+
+    .. math:: s^2 = \frac{n-1}{n} \sum_i (\theta_i - \bar\theta)^2
+
+    and Student's factor at n - 1 degrees of freedom. For the mean over equal fields that is the
+    standard deviation of the fields over the root of their number.
+
+    Parameters
+    ----------
+    totals : ndarray of float64, shape (n, m)
+        m totals of each of n independent fields.
+    statistic : callable
+        From sums of totals, shape (..., m), to the quantity, >= 0, shape (...).
+
+    Returns
+    -------
+    statistic : Statistic
+        Value from all fields; no interval for fewer than two.
+
+    References
+    ----------
+    .. [1] B. Efron, C. Stein, "The jackknife estimate of variance", Ann. Statist. 9 (1981) 586-596
+       (memory).
+
+    Examples
+    --------
+    Fields of 1, 2, 3 grains per unit area: mean 2, standard deviation 1, half width
+    4.30265/sqrt(3) = 2.48414, cut off at 0 below.
+
+    >>> fields = np.array([[1.0, 1.0], [2.0, 1.0], [3.0, 1.0]])
+    >>> field_interval(fields, lambda total: total[..., 0] / total[..., 1])
+    Statistic(value=2.0, low=0.0, high=4.48413...)
+    """
+    whole, number = totals.sum(axis=0), len(totals)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        value = float(statistic(whole))
+        if number < 2:
+            return Statistic(value=value)
+        without = statistic(whole - totals)
+    square = (number - 1) / number * float(np.sum((without - without.mean()) ** 2))
+    half = float(stdtrit(number - 1, 0.975)) * math.sqrt(square)
+    return Statistic(value=value, low=max(value - half, 0.0), high=value + half)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Tiles:
+    """How things are spread over the parts of a picture, or over fields, for intervals.
+
+    Attributes
+    ----------
+    index : ndarray of int64, shape (n,)
+        Part in which each thing lies.
+    share : ndarray of float64, shape (T,)
+        Share of the whole that each part has [-].
+    waves : ndarray of float64, shape (M, T), or None
+        Waves over the tiles of one picture; None where the parts are independent fields.
+    """
+
+    index: NDArray[np.int64]
+    share: NDArray[np.float64]
+    waves: NDArray[np.float64] | None
+
+    def totals(self, *columns: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Return the shares of the parts, and what they hold of each column in all.
+
+        Parameters
+        ----------
+        *columns : ndarray of float64, shape (n,)
+            A number for each thing.
+
+        Returns
+        -------
+        totals : ndarray of float64, shape (T, columns + 1)
+            The shares first.
+        """
+        totals = np.empty((len(self.share), len(columns) + 1))
+        totals[:, 0] = self.share
+        for k, column in enumerate(columns, start=1):
+            totals[:, k] = np.bincount(self.index, weights=column, minlength=len(totals))
+        return totals
+
+    def interval(
+        self,
+        totals: NDArray[np.float64],
+        statistic: Callable[[NDArray[np.float64]], NDArray[np.float64]],
+    ) -> Statistic:
+        """Return a function of totals with its 95 % interval.
+
+        Parameters
+        ----------
+        totals : ndarray of float64, shape (T, m)
+            Totals of each part.
+        statistic : callable
+            From sums of totals, shape (..., m), to the quantity, >= 0, shape (...).
+
+        Returns
+        -------
+        statistic : Statistic
+            As `tile_interval` or `field_interval` gives it.
+        """
+        if self.waves is None:
+            return field_interval(totals, statistic)
+        return tile_interval(totals, statistic, self.waves)
 
 
 def tile_waves(
@@ -211,7 +330,8 @@ def tile_interval(
         value = float(statistic(whole))
         if len(waves) < _FEWEST_WAVES:
             return Statistic(value=value)
-        quarter = 0.25 * (waves @ totals)
+        # not by `@`, whose last digits depend on the number of cores
+        quarter = 0.25 * np.einsum("mt,tk->mk", waves, totals)
         deviation = 2.0 * (statistic(whole + quarter) - statistic(whole - quarter))
     half = float(stdtrit(len(waves), 0.975)) * math.sqrt(float(np.mean(deviation**2)))
     if value > 0:

@@ -1,4 +1,4 @@
-"""What one pass over a label image tells of each label, in pixels.
+"""What a pass over a label image tells of each label, in pixels; labels taken apart into patches.
 
 Counts and boxes; no lengths, no statistics.
 """
@@ -10,16 +10,25 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from spheru.image.label_image import LabelImage
 from spheru.measure.intervals import TILES
-from spheru.measure.kernels import label_kernel
+from spheru.measure.kernels import label_kernel, patch_kernel
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from spheru.image.frame import Frame
-    from spheru.image.label_image import LabelImage
 
-__all__ = ["LabelSums", "cut_axes", "sum_labels"]
+__all__ = [
+    "LabelSums",
+    "connected_patches",
+    "cut_axes",
+    "dense_labels",
+    "gathered_sums",
+    "in_space",
+    "sum_labels",
+    "tile_of",
+]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -100,17 +109,9 @@ def sum_labels(image: LabelImage) -> LabelSums:
     2
     """
     frame = image.frame
-    labels = image.labels
-    names: NDArray[np.uint32] | None = None
+    labels, names = dense_labels(image.labels)
+    shape, periodic = in_space(frame)
     peak = int(labels.max())
-    if peak > labels.size // 16:  # the tables would outgrow the image: number anew
-        names = np.union1d(labels, [0]).astype(np.uint32)
-        labels = np.searchsorted(names, labels).astype(np.uint32)
-        labels.setflags(write=False)  # the kernel is compiled for the read-only arrays of an image
-        peak = len(names) - 1
-
-    shape = (1,) * (3 - frame.dimension) + frame.shape
-    periodic = np.array((False,) * (3 - frame.dimension) + frame.periodic)
     pixels = np.zeros(peak + 1, dtype=np.int64)
     first, low, high = (np.zeros((peak + 1, 3), dtype=np.int32) for _ in range(3))
     total = np.zeros((peak + 1, 3), dtype=np.int64)
@@ -127,6 +128,38 @@ def sum_labels(image: LabelImage) -> LabelSums:
         faces,
     )
 
+    return gathered_sums(
+        frame, pixels=pixels, first=first, low=low, high=high, total=total, faces=faces, names=names
+    )
+
+
+def gathered_sums(
+    frame: Frame,
+    *,
+    pixels: NDArray[np.int64],
+    first: NDArray[np.int32],
+    low: NDArray[np.int32],
+    high: NDArray[np.int32],
+    total: NDArray[np.int64],
+    faces: NDArray[np.int64],
+    names: NDArray[np.uint32] | None = None,
+) -> LabelSums:
+    """Return the sums of the labels that own a pixel from what `label_kernel` leaves.
+
+    Parameters
+    ----------
+    frame : Frame
+        The grid.
+    pixels, first, low, high, total, faces : ndarray
+        What the kernel leaves, row by row of the labels from 0 on.
+    names : ndarray of uint32 or None, optional
+        Labels of the rows where these are not their numbers.
+
+    Returns
+    -------
+    sums : LabelSums
+        Sums in pixels.
+    """
     label = np.flatnonzero(pixels)
     axes = slice(3 - frame.dimension, 3)
     start = first[label, axes].astype(np.int64)
@@ -144,20 +177,109 @@ def sum_labels(image: LabelImage) -> LabelSums:
     )
 
 
-def _tile_of(length: int) -> NDArray[np.int64]:
+def in_space(frame: Frame) -> tuple[tuple[int, ...], NDArray[np.bool_]]:
+    """Return shape and periodicity of a frame with three axes, as the kernels take them.
+
+    Parameters
+    ----------
+    frame : Frame
+        A grid of 2 or 3 axes.
+
+    Returns
+    -------
+    shape : tuple of int
+        Length 3; a plane is one layer.
+    periodic : ndarray of bool, shape (3,)
+        A plane does not go on above and below.
+    """
+    missing = 3 - frame.dimension
+    return (1,) * missing + frame.shape, np.array((False,) * missing + frame.periodic)
+
+
+def dense_labels(
+    labels: NDArray[np.uint32],
+) -> tuple[NDArray[np.uint32], NDArray[np.uint32] | None]:
+    """Return labels by which tables can be indexed without outgrowing the image.
+
+    Parameters
+    ----------
+    labels : ndarray of uint32
+        Labels of any height.
+
+    Returns
+    -------
+    dense : ndarray of uint32, shape of the labels
+        The labels themselves where the highest is low enough, else numbered anew without gaps;
+        read-only, as the kernels are compiled for the arrays of an image.
+    names : ndarray of uint32 or None
+        What the new numbers stand for, 0 first; None where the labels are as they were.
+    """
+    if int(labels.max()) <= labels.size // 16:
+        return labels, None
+    names = np.union1d(labels, [0]).astype(np.uint32)
+    dense = np.searchsorted(names, labels).astype(np.uint32)
+    dense.setflags(write=False)
+    return dense, names
+
+
+def connected_patches(image: LabelImage) -> tuple[LabelImage, NDArray[np.uint32]]:
+    """Take labels apart into the patches that hang together.
+
+    Pixels hang together by their faces, and by an edge (in a plane: a corner) where both of the
+    pixels beside it carry other labels. So the staircase of a boundary does not cut off single
+    pixels, and a thin line of label 0 still parts what it runs between.
+
+    Parameters
+    ----------
+    image : LabelImage
+        Labels on a grid of 2 or 3 axes; patches go on across periodic edges.
+
+    Returns
+    -------
+    patches : LabelImage
+        Numbers of the patches, 1 and up by their first pixels in memory, on the same frame.
+    owner : ndarray of uint32, shape (patches + 1,)
+        Label of each patch; 0 for number 0.
+
+    Examples
+    --------
+    Label 7 stands on both sides of label 2: three patches in a strip, two in a ring.
+
+    >>> from spheru.image.frame import Frame
+    >>> for periodic in (False, True):
+    ...     frame = Frame(shape=(1, 4), pixel=1e-6, periodic=periodic)
+    ...     strip = LabelImage(labels=np.array([[7, 2, 2, 7]]), frame=frame)
+    ...     patches, owner = connected_patches(strip)
+    ...     print(patches.labels.tolist(), owner.tolist())
+    [[1, 2, 2, 3]] [0, 7, 2, 7]
+    [[1, 2, 2, 1]] [0, 7, 2]
+    """
+    shape, periodic = in_space(image.frame)
+    labels = image.labels.reshape(shape)
+    changes = np.count_nonzero(labels[..., 1:] != labels[..., :-1])
+    parent, owner = (np.zeros(changes + shape[0] * shape[1] + 1, dtype=np.uint32) for _ in range(2))
+    patch = np.empty(shape, dtype=np.uint32)
+    count = np.zeros(1, dtype=np.int64)
+    patch_kernel(labels, periodic, parent, patch, owner, count)
+    patches = LabelImage(labels=patch.reshape(image.frame.shape), frame=image.frame)
+    return patches, owner[: int(count[0]) + 1].copy()
+
+
+def tile_of(length: int) -> NDArray[np.int64]:
+    """Return in which of the 8 tiles along an axis each of its pixels lies."""
     return np.arange(length, dtype=np.int64) * TILES // length
 
 
 def _tile_steps(shape: tuple[int, ...], dimension: int) -> NDArray[np.int64]:
     steps = np.zeros((3, max(shape)), dtype=np.int64)
     for axis in range(3 - dimension, 3):
-        steps[axis, : shape[axis]] = _tile_of(shape[axis]) * TILES ** (2 - axis)
+        steps[axis, : shape[axis]] = tile_of(shape[axis]) * TILES ** (2 - axis)
     return steps
 
 
 def _pairs(frame: Frame) -> NDArray[np.int64]:
     """Return the neighbouring pixels across each axis in each tile."""
-    places = [np.bincount(_tile_of(n), minlength=TILES) for n in frame.shape]
+    places = [np.bincount(tile_of(n), minlength=TILES) for n in frame.shape]
     pairs = np.empty((TILES**frame.dimension, frame.dimension), dtype=np.int64)
     for axis, periodic in enumerate(frame.periodic):
         along = [p.copy() for p in places]

@@ -17,19 +17,23 @@ __all__ = ["cell_sort_kernel", "thinning_kernel"]
 @kernel()
 def cell_sort_kernel(
     position: NDArray[np.float64],
+    length: NDArray[np.float64],
     order: NDArray[np.int64],
     low: NDArray[np.float64],
     edge: NDArray[np.float64],
     shape: NDArray[np.int64],
     start_out: NDArray[np.int64],
+    point_out: NDArray[np.float64],
     row_out: NDArray[np.int64],
 ) -> None:
-    """Sort points into cells, counting.
+    """Sort births into cells, counting.
 
     Parameters
     ----------
-    position : ndarray of float64, shape (n, 3)
-        Points, the last axis fastest.
+    position : ndarray of float64, shape (n, D)
+        Places, the last axis fastest.
+    length : ndarray of float64, shape (n,)
+        Grown length at birth.
     order : ndarray of int64, shape (n,)
         Rows in the order that they shall have within a cell.
     low, edge : ndarray of float64, shape (3,)
@@ -38,16 +42,20 @@ def cell_sort_kernel(
         Number of cells per axis.
     start_out : ndarray of int64, shape (cells + 1,)
         Where the rows of each cell begin in `row_out`; zero on entry.
+    point_out : ndarray of float64, shape (n, 4)
+        Places on three axes and lengths, cell by cell.
     row_out : ndarray of int64, shape (n,)
         Rows, cell by cell.
     """
     n = len(order)
-    cell = np.empty(n, np.int64)
+    axes = position.shape[1]
+    skip = 3 - axes
+    cell = np.empty(n, np.int32)
     for i in range(n):
         flat = 0
-        for k in range(3):
-            c = int(np.floor((position[i, k] - low[k]) / edge[k]))
-            flat = flat * shape[k] + min(max(c, 0), shape[k] - 1)
+        for k in range(axes):
+            c = int(np.floor((position[i, k] - low[skip + k]) / edge[skip + k]))
+            flat = flat * shape[skip + k] + min(max(c, 0), shape[skip + k] - 1)
         cell[i] = flat
         start_out[flat + 1] += 1
     for c in range(len(start_out) - 1):
@@ -55,14 +63,18 @@ def cell_sort_kernel(
     place = start_out[:-1].copy()
     for m in range(n):
         i = order[m]
-        row_out[place[cell[i]]] = i
+        at = place[cell[i]]
         place[cell[i]] += 1
+        row_out[at] = i
+        point_out[at, 0] = 0.0
+        for k in range(axes):
+            point_out[at, skip + k] = position[i, k]
+        point_out[at, 3] = length[i]
 
 
 @kernel()
 def _swallower(
-    position: NDArray[np.float64],
-    length: NDArray[np.float64],
+    point: NDArray[np.float64],
     period: NDArray[np.float64],
     begin: int,
     end: int,
@@ -73,12 +85,12 @@ def _swallower(
     Looks at the rows from `begin` to before `end`, whose lengths rise.
     """
     for j in range(begin, end):
-        reach = length[i] - length[j]
+        reach = point[i, 3] - point[j, 3]
         if reach <= 0:
             return -1
         distance2 = 0.0
         for k in range(3):
-            d = abs(position[i, k] - position[j, k])
+            d = abs(point[i, k] - point[j, k])
             d = min(d, abs(period[k] - d))
             distance2 += d * d
         if distance2 < reach * reach:
@@ -88,8 +100,8 @@ def _swallower(
 
 @kernel(parallel=True)
 def thinning_kernel(
-    position: NDArray[np.float64],
-    length: NDArray[np.float64],
+    point: NDArray[np.float64],
+    row: NDArray[np.int64],
     start: NDArray[np.int64],
     low: NDArray[np.float64],
     edge: NDArray[np.float64],
@@ -113,10 +125,10 @@ def thinning_kernel(
 
     Parameters
     ----------
-    position : ndarray of float64, shape (n, 3)
-        Places, cell by cell; within the grid.
-    length : ndarray of float64, shape (n,)
-        Grown length at birth, rising within each cell.
+    point : ndarray of float64, shape (n, 4)
+        Places within the grid and grown length at birth, cell by cell, the length rising in each.
+    row : ndarray of int64, shape (n,)
+        Row of each of them in `alive_out`.
     start : ndarray of int64, shape (cells + 1,)
         Where the births of each cell begin.
     low, edge : ndarray of float64, shape (3,)
@@ -136,7 +148,7 @@ def thinning_kernel(
     alive_out : ndarray of bool, shape (n,)
         Whether the birth survives.
     """
-    n = len(length)
+    n = len(point)
     levels = len(level_start)
     nz, ny, nx = level_shape[0, 0], level_shape[0, 1], level_shape[0, 2]
     first = earliest[level_start[levels - 1]]
@@ -149,12 +161,12 @@ def thinning_kernel(
         margin = np.empty(3)
         recent = block * chunk
         for i in range(block * chunk, min(n, (block + 1) * chunk)):
-            tau = length[i]
-            by = _swallower(position, length, period, recent, recent + 1, i)
+            tau = point[i, 3]
+            by = _swallower(point, period, recent, recent + 1, i)
             done = by >= 0 or tau <= first
             for k in range(3):
                 size = level_shape[0, k]
-                own[k] = min(max(int(np.floor((position[i, k] - low[k]) / edge[k])), 0), size - 1)
+                own[k] = min(max(int(np.floor((point[i, k] - low[k]) / edge[k])), 0), size - 1)
                 if period[k] < np.inf:
                     least[k] = -((size - 1) // 2)
                     most[k] = size // 2
@@ -162,7 +174,7 @@ def thinning_kernel(
                     least[k] = -own[k]
                     most[k] = size - 1 - own[k]
                 # distance to the next cell, less what rounding may have moved
-                offset = position[i, k] - low[k] - own[k] * edge[k]
+                offset = point[i, k] - low[k] - own[k] * edge[k]
                 margin[k] = max(min(offset, edge[k] - offset) - 1e-9 * edge[k], 0.0)
             # 1. ring by ring of cells, near to far
             ring = 0
@@ -200,7 +212,7 @@ def thinning_kernel(
                             if reach <= 0 or reach * reach <= gap2:
                                 continue
                             begin, end = start[cell], start[cell + 1]
-                            by = _swallower(position, length, period, begin, end, i)
+                            by = _swallower(point, period, begin, end, i)
                             if by >= 0:
                                 break
                         if by >= 0:
@@ -230,7 +242,7 @@ def thinning_kernel(
                     near = low[k] + (stack[depth, 1 + k] << level) * edge[k]
                     end = min((stack[depth, 1 + k] + 1) << level, level_shape[0, k])
                     far = low[k] + end * edge[k]
-                    x = position[i, k]
+                    x = point[i, k]
                     d = max(near - x, x - far, 0.0)
                     d = min(d, max(near - x + period[k], 0.0), max(x + period[k] - far, 0.0))
                     d = max(d - 1e-9 * edge[k], 0.0)
@@ -249,9 +261,9 @@ def thinning_kernel(
                                 stack[depth, 3] = cx
                                 depth += 1
                     continue
-                by = _swallower(position, length, period, start[flat], start[flat + 1], i)
+                by = _swallower(point, period, start[flat], start[flat + 1], i)
                 if by >= 0:
                     break
-            alive_out[i] = by < 0
+            alive_out[row[i]] = by < 0
             if by >= 0:
                 recent = by

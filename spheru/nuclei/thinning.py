@@ -22,7 +22,7 @@ if TYPE_CHECKING:
 
 __all__ = ["survivors"]
 
-_PER_CELL: Final = 2.0  # births per cell of the grid
+_PER_CELL: Final = 12.0  # births per cell of the grid: the fastest of 1 to 24
 _RINGS: Final = 2  # rings of cells that are tried before the pyramid
 
 
@@ -78,26 +78,25 @@ def survivors(births: Births, region: Region, *, threads: int | None = None) -> 
     if len(births) < 2:
         return alive
     low, extent, period = _box(births, region)
-    position = np.zeros((len(births), 3))
-    position[:, 3 - births.dimension :] = births.position
+    position = births.position
+    skip = 3 - births.dimension
     for axis in np.flatnonzero(np.isfinite(period)):
-        place = position[:, axis]
+        place = position[:, axis - skip]
         if place.min() < low[axis] or place.max() > low[axis] + period[axis]:
-            position[:, axis] = low[axis] + np.mod(place - low[axis], period[axis])
+            position = position.copy()
+            position[:, axis - skip] = low[axis] + np.mod(place - low[axis], period[axis])
     shape = _cells(extent, len(births))
     edge = np.where(extent > 0, extent / shape, 1.0)  # births may lie in a plane or on a line
     start = np.zeros(int(shape.prod()) + 1, dtype=np.int64)
+    point = np.empty((len(births), 4))
     row = np.empty(len(births), dtype=np.int64)
     rising = np.argsort(births.grown_length, kind="stable")
-    length = births.grown_length
-    cell_sort_kernel(position, rising, low, edge, shape, start, row)
-    position, length = position[row], length[row]
-    earliest, level_start, level_shape = _pyramid(length, start, shape)
-    found = np.empty(len(births), dtype=np.bool_)
+    cell_sort_kernel(position, births.grown_length, rising, low, edge, shape, start, point, row)
+    earliest, level_start, level_shape = _pyramid(point[:, 3], start, shape)
     with use_threads(threads):
         thinning_kernel(
-            position,
-            length,
+            point,
+            row,
             start,
             low,
             edge,
@@ -106,9 +105,8 @@ def survivors(births: Births, region: Region, *, threads: int | None = None) -> 
             level_start,
             level_shape,
             _RINGS,
-            found,
+            alive,
         )
-    alive[row] = found
     return alive
 
 

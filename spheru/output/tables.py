@@ -5,7 +5,7 @@ Every column name carries its unit. Where the text goes is decided in `spheru.ou
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
@@ -14,7 +14,7 @@ from spheru.files import table_text
 from spheru.output.classes import class_edges
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
+    from collections.abc import Iterator, Sequence
 
     from numpy.typing import NDArray
 
@@ -22,7 +22,9 @@ if TYPE_CHECKING:
     from spheru.measure.sizes import Sizes
     from spheru.run.result import Conversion
 
-__all__ = ["conversion_table", "size_table", "spherulite_table"]
+__all__ = ["conversion_table", "size_table", "spherulite_lines", "spherulite_table"]
+
+_ROWS: Final = 50_000  # that are text at the same time
 
 
 def spherulite_table(sizes: Sizes, births: Births | None) -> str:
@@ -44,9 +46,31 @@ def spherulite_table(sizes: Sizes, births: Births | None) -> str:
         centre_y_um (centre_z_um), touches_edge, pixels, weight_per_mm2 (weight_per_mm3): what
         the spherulite stands for by the edge rule, 0 where it is not used.
     """
-    rows = np.asarray(sizes.label, dtype=np.intp) - 1
+    return "".join(spherulite_lines(sizes, births))
+
+
+def spherulite_lines(sizes: Sizes, births: Births | None) -> Iterator[str]:
+    """Yield the table of the spherulites piece by piece, for millions of them.
+
+    Parameters
+    ----------
+    sizes, births
+        As for `spherulite_table`.
+
+    Yields
+    ------
+    text : str
+        The next rows; the header stands before the first ones.
+    """
+    for first in range(0, max(len(sizes), 1), _ROWS):
+        text = _spherulite_rows(sizes, births, slice(first, first + _ROWS))
+        yield text if first == 0 else text.partition("\n")[2]
+
+
+def _spherulite_rows(sizes: Sizes, births: Births | None, part: slice) -> str:
+    rows = np.asarray(sizes.label[part], dtype=np.intp) - 1
     empty: list[object] = [None] * rows.size
-    columns: dict[str, Sequence[object]] = {"label": sizes.label.tolist()}
+    columns: dict[str, Sequence[object]] = {"label": sizes.label[part].tolist()}
     place = [empty] * 3 if births is None else _by_axis(births.position[rows])
     columns |= {f"nucleus_{axis}_um": values for axis, values in zip("xyz", place, strict=False)}
     columns.setdefault("nucleus_z_um", empty)
@@ -59,13 +83,13 @@ def spherulite_table(sizes: Sizes, births: Births | None) -> str:
     columns |= {"birth_time_s": time, "birth_temperature_C": temperature}
     columns |= {"origin": origin, "form": form}
     kind, axes = ("volume", 3) if sizes.dimension == 3 else ("area", 2)
-    columns[f"{kind}_um{axes}"] = (sizes.size * 10.0 ** (6 * axes)).tolist()
-    columns["diameter_um"] = (sizes.diameter * 1e6).tolist()
-    centre = _by_axis(sizes.centre)
+    columns[f"{kind}_um{axes}"] = (sizes.size[part] * 10.0 ** (6 * axes)).tolist()
+    columns["diameter_um"] = (sizes.diameter[part] * 1e6).tolist()
+    centre = _by_axis(sizes.centre[part])
     columns |= {f"centre_{axis}_um": values for axis, values in zip("xyz", centre, strict=False)}
-    columns["touches_edge"] = sizes.touches_edge.tolist()
-    columns["pixels"] = sizes.pixels.tolist()
-    columns[f"weight_per_mm{axes}"] = (sizes.weight * 10.0 ** (-3 * axes)).tolist()
+    columns["touches_edge"] = sizes.touches_edge[part].tolist()
+    columns["pixels"] = sizes.pixels[part].tolist()
+    columns[f"weight_per_mm{axes}"] = (sizes.weight[part] * 10.0 ** (-3 * axes)).tolist()
     return table_text(columns)
 
 

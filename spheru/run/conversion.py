@@ -18,13 +18,24 @@ from spheru.run.course import Course, landmarks
 from spheru.run.result import Conversion
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from numpy.typing import NDArray
 
+    from spheru.image.frame import Frame
     from spheru.image.label_image import LabelImage
     from spheru.run.course import Landmarks
     from spheru.run.estimate import Estimate
 
-__all__ = ["SMOOTHING", "conversion"]
+__all__ = [
+    "SMOOTHING",
+    "conversion",
+    "conversion_of_counts",
+    "count_arrivals",
+    "counts_shape",
+    "highest_arrival",
+    "last_arrival",
+]
 
 SMOOTHING: Final = 0.15  # window of the simulated rate, as a share of the time from 10 to 90 %
 _BINS: Final = 1 << 12  # of the grown length, for the histogram of arrivals
@@ -53,13 +64,40 @@ def conversion(image: LabelImage, expected: Estimate, *, spherulites: int) -> Co
         flow is (heat of fusion) (crystallinity inside a spherulite) d(fraction)/dt, averaged over
         the window that the landmarks state.
     """
-    found, material = expected.kinetics, expected.settings.material
-    clock, frame = found.clock, image.frame
     if image.arrival is None:
         raise RunError("the map carries no arrivals")
-    last = _last_arrival(image.arrival, float(clock.grown_length[-1]))
+    last = last_arrival(highest_arrival(image.arrival), expected)
+    counts = np.zeros(counts_shape(image.frame), dtype=np.int64)
+    tile, found = count_arrivals(image.arrival, last)
+    counts[tile] = found
+    return conversion_of_counts(counts, last, expected, spherulites=spherulites)
+
+
+def conversion_of_counts(
+    counts: NDArray[np.int64], last: float, expected: Estimate, *, spherulites: int
+) -> Conversion:
+    """Return transformed fraction and heat flow from arrivals that are already counted.
+
+    Parameters
+    ----------
+    counts : ndarray of int64, shape `counts_shape`
+        Arrivals in every tile, as `count_arrivals` counts them.
+    last : float
+        Upper end of the histogram [m].
+    expected : Estimate
+        The mean field of the same run.
+    spherulites : int
+        Number of spherulites in the map.
+
+    Returns
+    -------
+    conversion : Conversion
+        As `conversion` returns it.
+    """
+    found, material = expected.kinetics, expected.settings.material
+    clock, frame = found.clock, expected.plan.frame
+    totals = counts.astype(np.float64)
     moments = np.append(clock.time_at(np.linspace(0.0, last, _BINS + 1)), clock.time[-1])
-    counts = _arrivals(image.arrival, last)
     waves = tile_waves(spherulites, frame.extent, frame.periodic)
 
     def course(count: NDArray[np.float64]) -> Course:
@@ -70,17 +108,17 @@ def conversion(image: LabelImage, expected: Estimate, *, spherulites: int) -> Co
     def read(count: bytes) -> Landmarks:
         return landmarks(course(np.frombuffer(count)), clock, material.t_m0, smoothing=SMOOTHING)
 
-    def statistic(totals: NDArray[np.float64], name: str) -> NDArray[np.float64]:
-        values = [getattr(read(row.tobytes()), name) for row in np.atleast_2d(totals)]
-        return np.array([np.nan if v is None else v for v in values]).reshape(totals.shape[:-1])
+    def statistic(count: NDArray[np.float64], name: str) -> NDArray[np.float64]:
+        values = [getattr(read(row.tobytes()), name) for row in np.atleast_2d(count)]
+        return np.array([np.nan if v is None else v for v in values]).reshape(count.shape[:-1])
 
     intervals = {
-        name: tile_interval(counts, partial(statistic, name=name), waves) for name in _READ_OFF
+        name: tile_interval(totals, partial(statistic, name=name), waves) for name in _READ_OFF
     }
     intervals["fraction_transformed"] = tile_interval(
-        counts, lambda count: 1 - count[..., -1] / count.sum(axis=-1), waves
+        totals, lambda count: 1 - count[..., -1] / count.sum(axis=-1), waves
     )
-    whole = counts.sum(axis=0)
+    whole = totals.sum(axis=0)
     simulated, marks = course(whole), read(whole.tobytes())
     predicted = Course(time=clock.time, fraction=found.fraction)
     time = _times(predicted)
@@ -97,28 +135,77 @@ def conversion(image: LabelImage, expected: Estimate, *, spherulites: int) -> Co
     )
 
 
-def _last_arrival(arrival: NDArray[np.float32], final: float) -> float:
-    """Return the upper end of the histogram of arrivals [m]."""
-    last = float(arrival.max(where=np.isfinite(arrival), initial=0.0))
-    return min(max(last, 1e-3 * final), final)
+def highest_arrival(arrival: NDArray[np.float32]) -> float:
+    """Return the largest arrival [m] of the pixels that were reached; 0 where none was."""
+    return float(arrival.max(where=np.isfinite(arrival), initial=0.0))
 
 
-def _arrivals(arrival: NDArray[np.float32], last: float) -> NDArray[np.float64]:
-    """Return per tile how many pixels each step of grown length reached, and how many none.
+def counts_shape(frame: Frame) -> tuple[int, int]:
+    """Return the shape of the counts of arrivals of a map: tiles, and bins + 1."""
+    return TILES**frame.dimension, _BINS + 1
 
-    Shape (tiles, _BINS + 1); the last column holds those that were not reached.
+
+def last_arrival(highest: float, expected: Estimate) -> float:
+    """Return the upper end of the histogram of arrivals.
+
+    Parameters
+    ----------
+    highest : float
+        Largest arrival of the map [m]; 0 where nothing was reached.
+    expected : Estimate
+        The mean field of the same run.
+
+    Returns
+    -------
+    last : float
+        Grown length [m], within that of the whole history.
     """
-    edges = [-(-np.arange(TILES + 1) * n // TILES) for n in arrival.shape]
-    parts = [[slice(a, b) for a, b in itertools.pairwise(edge)] for edge in edges]
-    rows = []
+    final = float(expected.kinetics.clock.grown_length[-1])
+    return min(max(highest, 1e-3 * final), final)
+
+
+def count_arrivals(
+    arrival: NDArray[np.float32],
+    last: float,
+    *,
+    start: Sequence[int] | None = None,
+    whole: Sequence[int] | None = None,
+) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Count per tile how many pixels each step of grown length reached, and how many none.
+
+    Parameters
+    ----------
+    arrival : ndarray of float32, shape (..)
+        Grown length at arrival [m] in the map or a part of it; inf where nothing arrived.
+    last : float
+        Upper end of the histogram [m].
+    start, whole : sequence of int, optional
+        First pixel of the part, and shape of the whole map, along each axis.
+
+    Returns
+    -------
+    tile : ndarray of int64, shape (n,)
+        Tiles of the whole map, 8 along each axis, that the part meets; rising.
+    counts : ndarray of int64, shape (n, bins + 1)
+        Pixels of the part in each; the last column holds those that were not reached.
+    """
+    whole = arrival.shape if whole is None else whole
+    start = (0,) * arrival.ndim if start is None else start
+    parts = []
+    for first, length, n in zip(start, arrival.shape, whole, strict=True):
+        edges = np.clip(-(-np.arange(TILES + 1) * n // TILES) - first, 0, length)
+        pairs = enumerate(itertools.pairwise(edges.tolist()))
+        parts.append([(k, slice(a, b)) for k, (a, b) in pairs if a < b])
+    tiles, rows = [], []
     for tile in itertools.product(*parts):
-        part = arrival[tile]
+        part = arrival[tuple(place for _, place in tile)]
         reached = part[np.isfinite(part)]
         place = np.minimum((reached * (_BINS / last)).astype(np.int64), _BINS - 1)
         count = np.bincount(place, minlength=_BINS + 1)
         count[_BINS] = part.size - reached.size
+        tiles.append(np.ravel_multi_index([k for k, _ in tile], (TILES,) * arrival.ndim))
         rows.append(count)
-    return np.array(rows, dtype=np.float64)
+    return np.array(tiles, dtype=np.int64), np.array(rows, dtype=np.int64)
 
 
 def _times(course: Course) -> NDArray[np.float64]:

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from spheru.quadrature import weighted_sum
 from spheru.thermal.history import Hold
 
 if TYPE_CHECKING:
@@ -211,7 +212,9 @@ def landmarks(course: Course, clock: Clock, t_m0: float, *, smoothing: float) ->
 def _mean_time(course: Course) -> float:
     gained = np.diff(course.fraction)
     middle = (course.time[1:] + course.time[:-1]) / 2
-    return float((gained @ middle + course.fraction[0] * course.time[0]) / course.fraction[-1])
+    return float(
+        (weighted_sum(gained, middle) + course.fraction[0] * course.time[0]) / course.fraction[-1]
+    )
 
 
 def _maxima(

@@ -8,6 +8,8 @@ from __future__ import annotations
 import logging
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from spheru.growth.exact import tessellate
 from spheru.measure.sizes import measure_sizes
 from spheru.nuclei.sampling import draw_births
@@ -22,9 +24,13 @@ from spheru.run.summary import summarise
 if TYPE_CHECKING:
     from collections.abc import Callable
 
+    from spheru.births import Births
+    from spheru.image.label_image import LabelImage
+    from spheru.measure.sizes import Sizes
+    from spheru.run.estimate import Estimate
     from spheru.run.settings import Settings
 
-__all__ = ["grow"]
+__all__ = ["grow", "surviving_births"]
 
 _LOG = logging.getLogger("spheru")
 
@@ -35,6 +41,7 @@ def grow(
     replica: int = 0,
     threads: int | None = None,
     progress: Callable[[str, float], None] | None = None,
+    expected: Estimate | None = None,
 ) -> Result:
     """Seed nuclei, grow them until they impinge, and measure the map.
 
@@ -48,6 +55,8 @@ def grow(
         Threads of the kernels; all cores where it is None. The result does not depend on it.
     progress : callable, optional
         Called with the name of the stage and the share of the whole that is done.
+    expected : Estimate, optional
+        What `estimate` gives for the settings, where it is there already.
 
     Returns
     -------
@@ -59,25 +68,16 @@ def grow(
     NoCrystallisationError, MeltingError, ValidityError
         If the history or the sample makes no sense.
     CapacityError
-        If the map needs more memory than there is.
+        If the map needs more memory than there is; see `spheru.run.stored` then.
     """
     tell = progress or (lambda _stage, _done: None)
     tell("mean field", 0.0)
-    expected = estimate(settings)
-    plan, found, settled = expected.plan, expected.kinetics, expected.settings
+    expected = expected or estimate(settings)
+    plan, settled = expected.plan, expected.settings
     refuse_too_large(plan)
 
     tell("nuclei", 0.05)
-    drawn = draw_births(
-        found.sources,
-        found.clock,
-        plan.region,
-        seed=settings.seed,
-        replica=replica,
-        until=plan.until,
-    )
-    born = drawn.take(survivors(drawn, plan.region, threads=threads))
-    _LOG.info("%d nuclei drawn, %d survive", len(drawn), len(born))
+    born = surviving_births(expected, replica=replica, threads=threads)
 
     tell("growth", 0.15)
     image = tessellate(
@@ -96,7 +96,8 @@ def grow(
     curves = conversion(image, expected, spherulites=sizes.count)
 
     tell("numbers", 0.95)
-    summary, warnings = summarise(expected, born, image, sizes, curves, replica=replica)
+    owners = _owners(image, sizes if measured is image else None)
+    summary, warnings = summarise(expected, born, owners, sizes, curves, replica=replica)
     tell("done", 1.0)
     return Result(
         settings=settled,
@@ -110,3 +111,41 @@ def grow(
         summary=summary,
         warnings=warnings,
     )
+
+
+def surviving_births(expected: Estimate, *, replica: int, threads: int | None = None) -> Births:
+    """Draw the nuclei of a run and keep those that are not swallowed before they start.
+
+    Parameters
+    ----------
+    expected : Estimate
+        The mean field of the run, with its plan.
+    replica : int
+        Number of the replica.
+    threads : int, optional
+        Threads of the kernels; all cores where it is None.
+
+    Returns
+    -------
+    births : Births
+        The survivors.
+    """
+    plan, found = expected.plan, expected.kinetics
+    drawn = draw_births(
+        found.sources,
+        found.clock,
+        plan.region,
+        seed=expected.settings.seed,
+        replica=replica,
+        until=plan.until,
+    )
+    born = drawn.take(survivors(drawn, plan.region, threads=threads))
+    _LOG.info("%d nuclei drawn, %d survive", len(drawn), len(born))
+    return born
+
+
+def _owners(image: LabelImage, sizes: Sizes | None) -> Births:
+    """Return the births that own a pixel of a map; `sizes` are those of the map, if it has any."""
+    label = np.flatnonzero(np.bincount(image.labels.ravel())) if sizes is None else sizes.label
+    kept: Births = image.births  # type: ignore[assignment]  # a map that was grown has births
+    return kept.take(label[label > 0].astype(np.intp) - 1)

@@ -17,6 +17,7 @@ from spheru.errors import CapacityError, ValidityError
 from spheru.image.frame import Frame
 from spheru.nuclei.placement import Clustered, Faces
 from spheru.nuclei.region import Region
+from spheru.quadrature import weighted_sum
 from spheru.theory.conversion import mean_field
 
 if TYPE_CHECKING:
@@ -26,7 +27,7 @@ if TYPE_CHECKING:
     from spheru.run.settings import Sample, Settings
     from spheru.theory.conversion import MeanField
 
-__all__ = ["Plan", "free_memory", "plan", "refuse_too_large", "typical_diameter"]
+__all__ = ["Plan", "fits_memory", "free_memory", "plan", "refuse_too_large", "typical_diameter"]
 
 # Nothing is drawn any more once fewer survivors, or pixels, than this are expected still to come.
 _STILL_TO_COME: Final = 1e-3
@@ -191,16 +192,34 @@ def refuse_too_large(made: Plan) -> None:
     CapacityError
         With what is needed, what is there and what would fit.
     """
-    free = free_memory()
-    if free is None or made.memory <= free:
+    if fits_memory(made):
         return
+    free = free_memory() or 0
     shape = " x ".join(map(str, made.frame.shape[::-1]))
     factor = (made.memory / free) ** (1 / made.frame.dimension)
+    stored = ", and --store keeps it on the disk" if made.frame.dimension == 3 else ""
     raise CapacityError(
         f"sample: a map of {shape} pixels needs {made.memory / 1e9:.1f} GB of memory and "
         f"{free / 1e9:.1f} GB are free; a pixel of {made.frame.pixel * factor * 1.05e6:.3g} um or "
-        "a smaller window would fit"
+        f"a smaller window would fit{stored}"
     )
+
+
+def fits_memory(made: Plan) -> bool:
+    """Tell whether a run fits the memory that is free, as far as the system tells.
+
+    Parameters
+    ----------
+    made : Plan
+        What would be run.
+
+    Returns
+    -------
+    fits : bool
+        Whether it does.
+    """
+    free = free_memory()
+    return free is None or made.memory <= free
 
 
 def _frame(sample: Sample, found: Kinetics) -> tuple[Frame, list[str]]:
@@ -263,7 +282,7 @@ def _section_density(sample: Sample, found: Kinetics) -> float:
     # spheres that hardly touch: each is cut by the planes within its radius
     gained = np.diff(bulk.survivors, prepend=0.0)
     radius = bulk.grown_length[-1] - bulk.grown_length
-    return float(2 * gained @ radius)
+    return float(2 * weighted_sum(gained, radius))
 
 
 def _picture_density(sample: Sample, found: Kinetics) -> float:

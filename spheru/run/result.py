@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from spheru.births import Births
+    from spheru.image.frame import Frame
     from spheru.image.label_image import LabelImage
     from spheru.measure.intervals import Statistic
     from spheru.measure.sizes import Sizes
@@ -22,7 +23,7 @@ if TYPE_CHECKING:
     from spheru.run.estimate import Estimate
     from spheru.run.settings import Settings
 
-__all__ = ["Conversion", "Result"]
+__all__ = ["Conversion", "Result", "StoredMap"]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -61,6 +62,29 @@ class Conversion:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class StoredMap:
+    """A map that is not in memory, but stored chunk by chunk.
+
+    Attributes
+    ----------
+    frame : Frame
+        The grid.
+    births : Births
+        Births of the labels: row i owns label i + 1.
+    count : int
+        Number of labels that own at least one pixel.
+    sha256 : str
+        Checksum of the map: the SHA-256 of the SHA-256 digests of its chunks (uint32, little
+        endian, without padding) in the order of memory.
+    """
+
+    frame: Frame
+    births: Births
+    count: int
+    sha256: str
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Result:
     """A finished run.
 
@@ -70,7 +94,7 @@ class Result:
         The settings with window and pixel settled.
     replica : int
         Number of the replica.
-    image : LabelImage
+    image : LabelImage or StoredMap
         The map; a film is a volume.
     picture : LabelImage
         The map as it is looked at: two axes, the named sight of a film, the middle of a block.
@@ -90,7 +114,7 @@ class Result:
 
     settings: Settings
     replica: int
-    image: LabelImage
+    image: LabelImage | StoredMap
     picture: LabelImage
     births: Births
     sizes: Sizes

@@ -5,7 +5,7 @@ No physics and no light; pictures of light are another room's work.
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
@@ -13,11 +13,16 @@ from spheru.image.frame import Frame
 from spheru.image.label_image import LabelImage
 
 if TYPE_CHECKING:
+    from collections.abc import Callable
+
     from numpy.typing import NDArray
 
+    from spheru.births import Births
     from spheru.run.settings import Sample
 
-__all__ = ["picture"]
+__all__ = ["picture", "picture_of_volume"]
+
+_PILE: Final = 128  # pixels along the edges of a pile of columns that is looked through at once
 
 
 def picture(image: LabelImage, sample: Sample) -> LabelImage:
@@ -39,13 +44,45 @@ def picture(image: LabelImage, sample: Sample) -> LabelImage:
     """
     if image.frame.dimension == 2:
         return image
-    frame = image.frame
+    return picture_of_volume(image.frame, image.births, sample, lambda part: image.labels[part])
+
+
+def picture_of_volume(
+    frame: Frame,
+    births: Births | None,
+    sample: Sample,
+    read: Callable[[tuple[slice, ...]], NDArray[np.uint32]],
+) -> LabelImage:
+    """Return the picture of a volume of which only parts need to be in memory.
+
+    Parameters
+    ----------
+    frame : Frame
+        The grid of the volume.
+    births : Births or None
+        Births of its labels.
+    sample : Sample
+        As for `picture`.
+    read : callable
+        Takes a slice per axis and returns the labels of that part.
+
+    Returns
+    -------
+    picture : LabelImage
+        Two axes.
+    """
+    depth, rows, columns = frame.shape
     labels: NDArray[np.uint32]
     if sample.view == "film" and sample.sight == "through":
-        labels, height = _fills_most(image.labels), frame.extent[0] / 2
+        labels, height = np.empty((rows, columns), dtype=np.uint32), frame.extent[0] / 2
+        for y in range(0, rows, _PILE):
+            for x in range(0, columns, _PILE):
+                part = (slice(y, min(y + _PILE, rows)), slice(x, min(x + _PILE, columns)))
+                labels[part] = _fills_most(read((slice(0, depth), *part)))
     else:
-        row = 0 if sample.view == "film" and sample.sight == "face" else frame.shape[0] // 2
-        labels, height = image.labels[row], float(frame.centres(0)[row])
+        row = 0 if sample.view == "film" and sample.sight == "face" else depth // 2
+        labels = read((slice(row, row + 1), slice(0, rows), slice(0, columns)))[0]
+        height = float(frame.centres(0)[row])
     flat = Frame(
         shape=frame.shape[1:],
         pixel=frame.pixel,
@@ -54,7 +91,7 @@ def picture(image: LabelImage, sample: Sample) -> LabelImage:
         closed=frame.closed[1:],
         plane_z=height,
     )
-    return LabelImage(labels=labels, frame=flat, births=image.births)
+    return LabelImage(labels=labels, frame=flat, births=births)
 
 
 def _fills_most(labels: NDArray[np.uint32]) -> NDArray[np.uint32]:

@@ -17,7 +17,6 @@ from spheru.run.estimate import course_numbers
 
 if TYPE_CHECKING:
     from spheru.births import Births
-    from spheru.image.label_image import LabelImage
     from spheru.measure.sizes import Sizes
     from spheru.run.course import Landmarks
     from spheru.run.estimate import Estimate
@@ -35,7 +34,7 @@ SCOPE: Final = (
 def summarise(
     expected: Estimate,
     births: Births,
-    image: LabelImage,
+    owners: Births,
     sizes: Sizes,
     curves: Conversion,
     *,
@@ -49,8 +48,8 @@ def summarise(
         The mean field of the run, with its plan and warnings.
     births : Births
         All nuclei that survived.
-    image : LabelImage
-        The map.
+    owners : Births
+        Those that own a pixel of the map.
     sizes : Sizes
         Its spherulites, measured in the picture.
     curves : Conversion
@@ -71,7 +70,6 @@ def summarise(
     fraction = curves.intervals["fraction_transformed"]
     volume = _diameter_of_mean_volume(fraction.value, count)
     weighted = "volume_weighted" if sizes.dimension == 3 else "area_weighted"
-    spherulites = image.count
     summary: dict[str, Any] = {
         "format_version": FORMAT_VERSION,
         "spheru_version": __version__,
@@ -83,7 +81,7 @@ def summarise(
         "material": settings.material.name,
         "size_um": [edge * 1e6 for edge in plan.frame.extent[::-1]],
         "pixel_um": plan.frame.pixel * 1e6,
-        "spherulites": spherulites,
+        "spherulites": len(owners),
         "measured": {
             "what": "equivalent diameter of a label "
             + ("in the volume" if sizes.dimension == 3 else f"in the picture ({_sight(expected)})"),
@@ -109,7 +107,7 @@ def summarise(
     summary |= _with_interval("crystallinity", fraction, settings.material.crystallinity)
     summary |= _course(curves)
     summary |= {
-        "spherulites_by_origin": _by_origin(births, image),
+        "spherulites_by_origin": _by_origin(owners),
         "kinetic_uncertainty": expected.numbers["kinetic_uncertainty"],
         "estimate": dict(expected.numbers),
     }
@@ -184,14 +182,12 @@ def _course(curves: Conversion) -> dict[str, Any]:
     return numbers
 
 
-def _by_origin(births: Births, image: LabelImage) -> dict[str, int]:
+def _by_origin(owners: Births) -> dict[str, int]:
     """Return how many spherulites of the map come from each source."""
-    kept = image.births if image.births is not None else births
-    if kept.origin is None:
+    if owners.origin is None:
         return {}
-    owners = np.bincount(image.labels.ravel(), minlength=len(kept) + 1)[1:] > 0
-    counts = np.bincount(kept.origin[owners], minlength=len(kept.origin_names))
-    return {name: int(n) for name, n in zip(kept.origin_names, counts, strict=True)}
+    counts = np.bincount(owners.origin, minlength=len(owners.origin_names))
+    return {name: int(n) for name, n in zip(owners.origin_names, counts, strict=True)}
 
 
 def _warnings(sizes: Sizes, diameter: Statistic) -> list[str]:

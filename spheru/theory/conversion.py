@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Literal
 import numpy as np
 
 from spheru.errors import ValidityError
-from spheru.quadrature import GAUSS_POINTS, GAUSS_WEIGHTS, distinct
+from spheru.quadrature import GAUSS_POINTS, GAUSS_WEIGHTS, distinct, weighted_sum
 from spheru.theory.moments import Moments
 
 if TYPE_CHECKING:
@@ -122,7 +122,7 @@ class MeanField:
             return math.nan
         # integral of values d(fraction), by parts
         left = given[-1] * math.exp(-self.extended[-1])
-        whole = given[0] + float(np.diff(given) @ self.survival) - left
+        whole = given[0] + float(weighted_sum(np.diff(given), self.survival)) - left
         return float(whole / self.fraction_final)
 
     def shares(self, density: ArrayLike) -> float:
@@ -143,7 +143,7 @@ class MeanField:
             raise ValidityError(
                 f"mean field: expected {self.density.size} densities, got shape {own.shape}"
             )
-        return float(own[0] + np.diff(own) @ self.survival)
+        return float(own[0] + weighted_sum(np.diff(own), self.survival))
 
     def grown_length_at(self, fraction: ArrayLike) -> NDArray[np.float64]:
         """Return the grown length at which a fraction is transformed.
@@ -302,11 +302,11 @@ def mean_field(
     steps = np.diff(length)
     share = np.divide(step, steps[k], out=np.ones_like(step), where=steps[k] > 0)
     survival = np.zeros(steps.size)
-    np.add.at(survival, k, share * (inside @ GAUSS_WEIGHTS))
+    np.add.at(survival, k, share * weighted_sum(inside, GAUSS_WEIGHTS))
 
     fresh = np.diff(born) * survival
-    pairs = float(step @ ((slope**2 * inside) @ GAUSS_WEIGHTS))
-    triples = float(step @ ((slope**3 * inside) @ GAUSS_WEIGHTS))
+    pairs = float(weighted_sum(step, weighted_sum(slope**2 * inside, GAUSS_WEIGHTS)))
+    triples = float(weighted_sum(step, weighted_sum(slope**3 * inside, GAUSS_WEIGHTS)))
     return MeanField(
         dimension=dimension,
         grown_length=length,

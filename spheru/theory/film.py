@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from spheru.errors import ValidityError
+from spheru.quadrature import weighted_sum
 from spheru.theory.moments import Moments
 
 if TYPE_CHECKING:
@@ -220,7 +221,7 @@ def _spread(left_over: NDArray[np.float64], window: slice, nodes: int) -> NDArra
 def _survivors(born: NDArray[np.float64], left_over: NDArray[np.float64], window: slice) -> float:
     """Return how many nuclei are born where nothing has grown yet."""
     alive = _spread(left_over, window, born.size)
-    return float(born[0] + np.diff(born) @ ((alive[1:] + alive[:-1]) / 2))
+    return float(born[0] + weighted_sum(np.diff(born), (alive[1:] + alive[:-1]) / 2))
 
 
 @cache

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from spheru.errors import ValidityError
-from spheru.quadrature import GAUSS_POINTS, GAUSS_WEIGHTS, distinct
+from spheru.quadrature import GAUSS_POINTS, GAUSS_WEIGHTS, distinct, weighted_sum
 from spheru.thermal.history import Quench
 
 if TYPE_CHECKING:
@@ -186,7 +186,7 @@ class Clock:
         """
         steps = np.diff(self.time)
         samples = rate(_temperatures(self.history, self.time[:-1], steps))
-        return _cumulative(steps * (samples @ GAUSS_WEIGHTS))
+        return _cumulative(steps * weighted_sum(samples, GAUSS_WEIGHTS))
 
     def temperature_at(self, time: ArrayLike) -> NDArray[np.float64]:
         """Return the temperature at some times.
@@ -307,9 +307,9 @@ def _run(history: History, growth: Rate, times: NDArray[np.float64]) -> Clock:
     kept: list[tuple[NDArray[np.float64], NDArray[np.float64]]] = []
     while left.size:
         samples = _checked(growth(_temperatures(history, left, steps)))
-        parts = steps * (samples @ GAUSS_WEIGHTS)
+        parts = steps * weighted_sum(samples, GAUSS_WEIGHTS)
         scale = total + float(parts.sum())
-        wrong = np.abs(parts - steps * (samples @ _CHECK)) > _TOLERANCE * scale
+        wrong = np.abs(parts - steps * weighted_sum(samples, _CHECK)) > _TOLERANCE * scale
         wrong &= steps > _FINEST * history.duration
         kept.append((left[~wrong], samples[~wrong]))
         total += float(parts[~wrong].sum())
@@ -326,7 +326,7 @@ def _run(history: History, growth: Rate, times: NDArray[np.float64]) -> Clock:
     values = {
         "time": nodes,
         "temperature": temperature,
-        "grown_length": _cumulative(np.diff(nodes) * (samples @ GAUSS_WEIGHTS)),
+        "grown_length": _cumulative(np.diff(nodes) * weighted_sum(samples, GAUSS_WEIGHTS)),
         "growth_rate": _checked(growth(temperature)),
         "lowest_temperature": np.minimum.accumulate(temperature),
         "_samples": samples,
@@ -352,7 +352,7 @@ def _cumulative(parts: NDArray[np.float64]) -> NDArray[np.float64]:
 
 def _integrated(samples: NDArray[np.float64], x: NDArray[np.float64]) -> NDArray[np.float64]:
     """Integral from 0 to x of the polynomial through five samples on [0, 1]."""
-    a = samples @ _POWERS
+    a = np.einsum("...i,ij->...j", samples, _POWERS)
     value = a[..., 4] * x
     for j in (3, 2, 1, 0):
         value = (value + a[..., j]) * x
@@ -361,7 +361,7 @@ def _integrated(samples: NDArray[np.float64], x: NDArray[np.float64]) -> NDArray
 
 def _inverted(samples: NDArray[np.float64], share: NDArray[np.float64]) -> NDArray[np.float64]:
     """Places x in [0, 1] by which a share of the whole integral is reached: guarded Newton."""
-    a = samples @ _POWERS
+    a = np.einsum("...i,ij->...j", samples, _POWERS)
     a /= a.sum(axis=1, keepdims=True)
     slope = a * np.arange(1, 6)
     low, high, x = np.zeros_like(share), np.ones_like(share), share.copy()

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import os
 import subprocess
 import sys
 from pathlib import Path
@@ -111,6 +112,21 @@ def test_the_settings_of_a_run_give_the_same_run_again(run, small):
     assert names == sorted(p.name for p in second.iterdir())
     for name in names:
         assert (first / name).read_bytes() == (second / name).read_bytes(), name
+
+
+def test_the_number_of_threads_of_any_library_changes_no_byte(small):
+    summaries = []
+    for count in ("1", "2"):
+        environment = dict.fromkeys(("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS"), count)
+        folder = small.parent / count
+        subprocess.run(
+            [sys.executable, "-m", "spheru", "grow", small, "-o", folder, "--threads", count],
+            env=os.environ | environment,
+            capture_output=True,
+            check=True,
+        )
+        summaries.append((folder / "summary.json").read_bytes())
+    assert summaries[0] == summaries[1]
 
 
 def test_an_output_folder_that_exists_is_refused_before_anything_is_computed(run, small):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 
 import numba
@@ -10,7 +11,7 @@ import pytest
 
 from spheru.births import Births
 from spheru.errors import ValidityError
-from spheru.growth.exact import memory_needed, tessellate
+from spheru.growth.exact import Population, memory_needed, tessellate
 from spheru.image.frame import Frame
 from tests.growth import reference
 
@@ -201,6 +202,77 @@ def test_births_of_a_section_are_those_that_own_a_pixel():
     assert image.labels.tolist() == [[2, 2, 1, 1]]
 
 
+def pieces(shape, edges):
+    """Windows that cover a grid, the last of each axis cut off."""
+    parts = [
+        [slice(at, min(at + edge, n)) for at in range(0, n, edge)]
+        for n, edge in zip(shape, edges, strict=True)
+    ]
+    return itertools.product(*parts)
+
+
+@pytest.mark.parametrize("end", [math.inf, 3.0], ids=["no end", "end"])
+@pytest.mark.parametrize("late", [0.0, 3.0], ids=["equal births", "different births"])
+@pytest.mark.parametrize("periodic", [False, True], ids=["cut", "periodic"])
+@pytest.mark.parametrize(
+    ("shape", "edges", "n"),
+    [((35, 19, 41), (17, 19, 13), 40), ((9, 20, 150), (9, 7, 37), 500), ((90, 145), (33, 51), 30)],
+    ids=["3D", "3D fine", "2D"],
+)
+def test_windows_pieced_together_have_the_bytes_of_the_whole(shape, edges, n, periodic, late, end):
+    if numba.config.DISABLE_JIT:
+        pytest.skip("too many pixels for the interpreter")
+    frame = Frame(shape=shape, pixel=1e-6, origin=2e-6, periodic=periodic)
+    births = births_in(frame, n, seed=4, late=late)
+    population = Population.of(births, frame)
+    whole = tessellate(births, frame, end=end * 1e-6, arrival=True)
+    labels, arrival = np.zeros(shape, np.uint32), np.zeros(shape, np.float32)
+    for window in pieces(shape, edges):
+        part = population.tessellate(window=window, end=end * 1e-6, arrival=True)
+        labels[window], arrival[window] = part.labels, part.arrival
+        assert part.frame == frame.crop([cut.start for cut in window], part.labels.shape)
+        assert part.births is births
+        alone = tessellate(births, frame, end=end * 1e-6, window=window, threads=1)
+        np.testing.assert_array_equal(alone.labels, part.labels)
+    assert labels.tobytes() == whole.labels.tobytes()
+    assert arrival.tobytes() == whole.arrival.tobytes()
+
+
+def test_window_of_a_section_counts_all_births():
+    frame = Frame(shape=(20, 30), pixel=1e-6, periodic=True, plane_z=2e-6)
+    births = births_in(frame, 40, depth=30.0, late=3.0)
+    labels, _ = reference.tessellate(births, frame, period_z=30e-6)
+    window = (slice(3, 15), slice(11, 30))
+    image = tessellate(births, frame, period_z=30e-6, window=window)
+    np.testing.assert_array_equal(image.labels, labels[window])
+    assert len(image.births) == 40
+
+
+@pytest.mark.parametrize("offset", range(0, 17, 3))
+def test_given_memory_is_filled_wherever_it_begins(offset):
+    frame = Frame(shape=(7, 50), pixel=1.0)
+    births = births_in(frame, 20, late=3.0)
+    room = np.full(7 * 50 + 32, 99, np.uint32)
+    out = room[offset : offset + 350].reshape(7, 50)
+    image = Population.of(births, frame).tessellate(out=out)
+    assert np.shares_memory(image.labels, room)
+    np.testing.assert_array_equal(out, tessellate(births, frame).labels)
+    assert (np.delete(room, np.s_[offset : offset + 350]) == 99).all()
+
+
+@pytest.mark.parametrize("periodic", [False, True], ids=["cut", "periodic"])
+@pytest.mark.parametrize("place", [0.0, 0.5], ids=["corners", "centres"])
+@pytest.mark.parametrize(("shape", "n"), [((30, 41), 60), ((12, 17, 20), 90)], ids=["2D", "3D"])
+def test_ties_of_births_on_the_lattice_of_pixels_equal_brute_force(shape, n, place, periodic):
+    rng = np.random.default_rng(2)
+    births = Births(
+        position=rng.integers(0, shape, (n, len(shape))) + place, grown_length=[2.0] * n
+    )
+    frame = Frame(shape=shape, pixel=1.0, periodic=periodic)
+    assert_equals_brute_force(births, frame)
+    assert_equals_brute_force(births, frame, end=5.0)
+
+
 def test_progress_rises_to_one():
     frame = Frame(shape=(40, 40), pixel=1.0)
     seen = []
@@ -219,6 +291,30 @@ def test_memory_needed_is_that_of_the_arrays():
 FLAT = Frame(shape=(4, 4), pixel=1e-6)
 SOLID = Births(position=np.zeros((2, 3)), grown_length=np.zeros(2))
 PLANAR = Births(position=np.zeros((2, 2)), grown_length=np.zeros(2))
+
+
+@pytest.mark.parametrize(
+    ("window", "message"),
+    [
+        ((slice(0, 2),), "2 slices"),
+        ((slice(0, 2), slice(3, 3)), "at least one pixel"),
+        ((slice(0, 4, 2), slice(0, 4)), "without steps"),
+    ],
+    ids=["one axis", "empty", "steps"],
+)
+def test_window_that_does_not_fit_is_refused(window, message):
+    with pytest.raises(ValidityError, match=message):
+        tessellate(PLANAR, FLAT, window=window)
+
+
+@pytest.mark.parametrize(
+    "out",
+    [np.zeros((4, 5), np.uint32), np.zeros((4, 4), np.int32), np.zeros((4, 8), np.uint32)[:, ::2]],
+    ids=["shape", "type", "strides"],
+)
+def test_memory_that_does_not_fit_is_refused(out):
+    with pytest.raises(ValidityError, match="contiguous memory"):
+        Population.of(PLANAR, FLAT).tessellate(out=out)
 
 
 @pytest.mark.parametrize(

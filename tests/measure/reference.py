@@ -40,6 +40,74 @@ def image_of(labels, *, pixel=1.0, **edges):
     return LabelImage(labels=labels, frame=Frame(shape=labels.shape, pixel=pixel, **edges))
 
 
+def patches(labels, periodic):  # noqa: C901 (one flood, told in one place)
+    """Return the patches of a label image, found by flooding, and the label of each.
+
+    Pixels hang together by faces, and by an edge where both pixels beside it carry other labels.
+    """
+    shape = labels.shape
+    axes = range(labels.ndim)
+    unit = np.eye(labels.ndim, dtype=int)
+    faces = [s * unit[k] for k in axes for s in (1, -1)]
+    edges = [(s * unit[k], t * unit[m]) for k in axes for m in axes if k < m
+             for s in (1, -1) for t in (1, -1)]  # fmt: skip
+
+    def at(place):
+        wrapped = []
+        for x, n, goes_on in zip(place, shape, periodic, strict=True):
+            if not (0 <= x < n or goes_on):
+                return None
+            wrapped.append(x % n)
+        return tuple(wrapped)
+
+    def near(place):
+        here, own = np.array(place), labels[place]
+        yield from (at(here + step) for step in faces)
+        for one, other in edges:
+            beside = [at(here + one), at(here + other)]
+            if all(b is not None and labels[b] not in (0, own) for b in beside):
+                yield at(here + one + other)
+
+    found = np.zeros(shape, dtype=int)
+    owner = [0]
+    for first in zip(*np.nonzero(labels), strict=True):
+        if found[first]:
+            continue
+        owner.append(int(labels[first]))
+        found[first] = len(owner) - 1
+        todo = [first]
+        while todo:
+            for place in near(todo.pop()):
+                if place is not None and labels[place] == owner[-1] and not found[place]:
+                    found[place] = len(owner) - 1
+                    todo.append(place)
+    return found, owner
+
+
+def exits(labels, label, step, periodic):
+    """Return the pixels of a label from which one step leads out of it or out of the frame."""
+    count = 0
+    for place in np.argwhere(labels == label):
+        target = place + step
+        outside = (target < 0) | (target >= labels.shape)
+        if (outside & ~np.array(periodic)).any():
+            count += 1
+        else:
+            count += labels[tuple(target % labels.shape)] != label
+    return count
+
+
+def drawn(outline, size, *, centre, angle, pixels):
+    """Return an image of one figure, turned; `outline` tells from x, y, size what lies inside."""
+    y, x = np.mgrid[:pixels, :pixels] + 0.5
+    y, x = y - centre[0], x - centre[1]
+    turned = (
+        x * math.cos(angle) + y * math.sin(angle),
+        y * math.cos(angle) - x * math.sin(angle),
+    )
+    return image_of(outline(*turned, size).astype(int))
+
+
 def grid_points(frame, shift=0.0):
     axes = [frame.centres(axis) + shift for axis in range(frame.dimension)]
     return np.stack(np.meshgrid(*axes, indexing="ij"), axis=-1).reshape(-1, frame.dimension)

@@ -184,7 +184,7 @@ def test_faults_of_the_caller_are_named():
     with pytest.raises(ValidityError, match="between 0 and 1"):
         measure_sizes(image).quantiles(1.5)
     with pytest.raises(UnknownNameError, match="weighting"):
-        measure_sizes(image).quantiles(0.5, weighting="volume")
+        measure_sizes(image).quantiles(0.5, weighting="mass")
 
 
 # Poisson-Voronoi, 1e4 plane cells in 16 maps (Gilbert 1962, Meijering 1953, memory; verified by

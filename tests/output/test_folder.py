@@ -29,6 +29,7 @@ FILES = [
     "conversion.png",
     "labels.ome.tif",
     "map.png",
+    "report.html",
     "settings.toml",
     "sizes.csv",
     "sizes.png",
@@ -107,6 +108,7 @@ def test_summary_names_the_hash_of_every_file_and_holds_plain_numbers(tmp_path, 
     save_run(result, tmp_path / "run")
     found = bytes_of(tmp_path / "run")
     summary = json.loads(found.pop("summary.json"))
+    found.pop("report.html")  # made of the others
     assert summary["files"] == {
         name: hashlib.sha256(content).hexdigest() for name, content in found.items()
     }
@@ -246,7 +248,9 @@ def test_a_folder_without_permission_is_refused_before_the_run(tmp_path, monkeyp
         pytest.param(ZeroDivisionError(), ZeroDivisionError, id="a bug"),
     ],
 )
-@pytest.mark.parametrize("stage", ["write_labels", "conversion_table", "png", "sha256", "_put"])
+@pytest.mark.parametrize(
+    "stage", ["write_labels", "conversion_table", "png", "sha256", "put_folder"]
+)
 def test_an_interrupted_write_leaves_nothing(tmp_path, result, monkeypatch, stage, fault, seen):
     def fail(*args, **kwargs):
         raise fault
@@ -260,7 +264,7 @@ def test_an_interrupted_write_leaves_nothing(tmp_path, result, monkeypatch, stag
         assert "\n" not in str(caught.value)
 
 
-@pytest.mark.parametrize("stage", ["write_labels", "sha256", "_put"])
+@pytest.mark.parametrize("stage", ["write_labels", "sha256", "put_folder"])
 def test_an_interrupted_overwrite_leaves_the_former_run(tmp_path, result, monkeypatch, stage):
     save_run(result, tmp_path / "run")
     before = bytes_of(tmp_path / "run")

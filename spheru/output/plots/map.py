@@ -20,13 +20,24 @@ from spheru.output.plots.canvas import WIDTH, add_caption, add_title, caption_wi
 from spheru.output.plots.colouring import COLOURS, colour_codes, neighbour_pairs, palette
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from matplotlib.artist import Artist
     from matplotlib.axes import Axes
     from numpy.typing import NDArray
 
     from spheru.image.frame import Frame
     from spheru.image.label_image import LabelImage
 
-__all__ = ["describe_edges", "map_colours", "plot_map", "reduction"]
+__all__ = [
+    "boundary_lines",
+    "describe_edges",
+    "map_colours",
+    "plot_map",
+    "reduction",
+    "shown_labels",
+    "swatch",
+]
 
 _LARGEST: Final = 4096  # pixels along an edge of the picture
 _SMALLEST: Final = 800  # to which a small map is blown up by a whole number
@@ -104,11 +115,7 @@ def map_colours(image: LabelImage) -> NDArray[np.uint8]:
     ValidityError
         If the image has three axes.
     """
-    if image.frame.dimension != 2:
-        raise ValidityError("map: expected an image of two axes; give a plane of the volume")
-    step = reduction(image.frame)
-    labels = image.labels[::step, ::step]
-    blow_up = -(-_SMALLEST // max(labels.shape)) if max(labels.shape) < _SMALLEST else 1
+    labels, blow_up = _reduced(image)
     shown = np.zeros(int(labels.max()) + 1, dtype=bool)
     shown[labels] = True
     shown[0] = False
@@ -121,16 +128,73 @@ def map_colours(image: LabelImage) -> NDArray[np.uint8]:
     if blow_up > 1:
         numbered = numbered.repeat(blow_up, axis=0).repeat(blow_up, axis=1)
     picture = colours[numbered]
-    if count and numbered.size >= count * _ROOM**2:
-        line = np.zeros(numbered.shape, dtype=bool)
-        line[:-1] |= numbered[:-1] != numbered[1:]
-        line[:, :-1] |= numbered[:, :-1] != numbered[:, 1:]
-        picture[line] = (picture[line] * _SHADE).astype(np.uint8)
+    line = boundary_lines(numbered, count)
+    picture[line] = (picture[line] * _SHADE).astype(np.uint8)
     return picture
 
 
+def shown_labels(image: LabelImage) -> NDArray[np.uint32]:
+    """Return the labels as they are shown: every k-th pixel, or each one as a square of pixels.
+
+    Parameters
+    ----------
+    image : LabelImage
+        A map of two axes.
+
+    Returns
+    -------
+    labels : ndarray of uint32, shape (rows, columns)
+        One label for each pixel of the picture that `map_colours` makes.
+
+    Raises
+    ------
+    ValidityError
+        If the image has three axes.
+    """
+    labels, blow_up = _reduced(image)
+    return labels.repeat(blow_up, axis=0).repeat(blow_up, axis=1) if blow_up > 1 else labels
+
+
+def boundary_lines(labels: NDArray[np.integer], count: int) -> NDArray[np.bool_]:
+    """Return the pixels of a picture on which boundaries are drawn.
+
+    Parameters
+    ----------
+    labels : ndarray of int, shape (rows, columns)
+        Labels of the pixels of the picture.
+    count : int
+        Number of spherulites in it.
+
+    Returns
+    -------
+    line : ndarray of bool, shape (rows, columns)
+        Lines one pixel wide; none where spherulites are less than 6 pixels across.
+    """
+    line = np.zeros(labels.shape, dtype=np.bool_)
+    if count and labels.size >= count * _ROOM**2:
+        line[:-1] |= labels[:-1] != labels[1:]
+        line[:, :-1] |= labels[:, :-1] != labels[:, 1:]
+    return line
+
+
+def _reduced(image: LabelImage) -> tuple[NDArray[np.uint32], int]:
+    """Return the labels that are shown, and how many pixels wide each of them is."""
+    if image.frame.dimension != 2:
+        raise ValidityError("map: expected an image of two axes; give a plane of the volume")
+    step = reduction(image.frame)
+    labels = image.labels[::step, ::step]
+    small = max(labels.shape) < _SMALLEST
+    return labels, -(-_SMALLEST // max(labels.shape)) if small else 1
+
+
 def plot_map(
-    image: LabelImage, *, ax: Axes | None = None, title: str = "", caption: str = ""
+    image: LabelImage,
+    *,
+    ax: Axes | None = None,
+    title: str = "",
+    caption: str = "",
+    colours: NDArray[np.uint8] | None = None,
+    legend: Sequence[Artist] | None = None,
 ) -> Axes:
     """Draw a label image with a scale bar below it.
 
@@ -143,6 +207,10 @@ def plot_map(
         pixel of the picture.
     title, caption : str, optional
         What to write above and below.
+    colours : ndarray of uint8, shape (rows, columns, 3), optional
+        Colours instead of those of `map_colours`, as large.
+    legend : sequence of Artist, optional
+        What the legend shows; what has not crystallised without it.
 
     Returns
     -------
@@ -154,14 +222,15 @@ def plot_map(
     ValidityError
         If the image has three axes.
     """
-    colours = map_colours(image)
+    colours = map_colours(image) if colours is None else colours
     step = reduction(image.frame)
     if step > 1:
         which = {2: "second", 3: "third"}.get(step, f"{step}th")
         caption = f"{caption} Shown is every {which} pixel.".strip()
     height, width = (edge * 1e6 for edge in image.frame.extent)
-    nothing = not image.labels.all()
-    below = 38.0 if nothing else 22.0  # pt, of the caption: under the bar and the legend
+    if legend is None:
+        legend = [] if image.labels.all() else [swatch(_NOTHING, "not crystallised")]
+    below = 38.0 if legend else 22.0  # pt, of the caption: under the bar and the legend
     strip = _STRIP if ax is None else len(colours)
     ax = _exact_axes(colours.shape, title, caption, below) if ax is None else ax
     scale = height / len(colours)
@@ -187,27 +256,45 @@ def plot_map(
         )
     )
     ax.text(length, 0, f"  {length:g} µm", transform=place, va="center_baseline", fontsize=10)
-    if nothing:
+    if legend:
         ax.legend(
-            handles=[
-                Patch(
-                    facecolor="#{:02x}{:02x}{:02x}".format(*_NOTHING),
-                    edgecolor="black",
-                    linewidth=0.5,
-                    label="not crystallised",
-                )
-            ],
+            handles=list(legend),
             loc="upper left",
             bbox_to_anchor=(0, 0),
             bbox_transform=offset_copy(ax.transAxes, root_figure(ax), y=-20, units="points"),
             borderaxespad=0,
             borderpad=0,
             handlelength=1.4,
+            ncols=len(legend),
+            columnspacing=1.2,
             fontsize=9,
             frameon=False,
         )
     add_caption(ax, caption, below=below)
     return ax
+
+
+def swatch(colour: Sequence[int], label: str) -> Patch:
+    """Return a box of a colour for a legend.
+
+    Parameters
+    ----------
+    colour : sequence of int, length 3
+        sRGB, 0 to 255.
+    label : str
+        What it means.
+
+    Returns
+    -------
+    patch : Patch
+        The box.
+    """
+    return Patch(
+        facecolor="#{:02x}{:02x}{:02x}".format(*colour),
+        edgecolor="black",
+        linewidth=0.5,
+        label=label,
+    )
 
 
 def _exact_axes(shape: tuple[int, ...], title: str, caption: str, below: float) -> Axes:

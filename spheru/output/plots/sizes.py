@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     from spheru.measure.intervals import Statistic
     from spheru.measure.sizes import Sizes
 
-__all__ = ["describe_sizes", "plot_sizes"]
+__all__ = ["describe_sizes", "draw_sizes", "plot_sizes"]
 
 
 def describe_sizes(sizes: Sizes) -> str:
@@ -40,13 +40,17 @@ def describe_sizes(sizes: Sizes) -> str:
         if sizes.dimension == 3
         else "Diameters of circles of equal area (2D)"
     )
+    guard = f", guard {sizes.guard * 1e6:.3g} µm"
     rule = {
         "none": "every piece counts as it is",
         "exclude": "pieces at the edge left out, so large ones are missed",
         "miles-lantuejoul": "pieces at the edge left out, the others weighted (Miles-Lantuéjoul)",
+        "counting-frame": f"counting frame{guard}",
+        "guard-frame": f"centres within a guard frame{guard}",
     }.get(sizes.edge_rule, sizes.edge_rule)
     floor = f", from {sizes.floor * 1e6:.3g} µm up" if sizes.floor > 0 else ""
-    return f"{kind}, n = {sizes.count}{floor}. Edge rule: {rule}."
+    pieces = ", each connected patch by itself" if sizes.kind == "patch" else ""
+    return f"{kind}{pieces}, n = {sizes.count}{floor}. Edge rule: {rule}."
 
 
 def plot_sizes(sizes: Sizes, *, ax: Axes | None = None, title: str = "", caption: str = "") -> Axes:
@@ -67,7 +71,33 @@ def plot_sizes(sizes: Sizes, *, ax: Axes | None = None, title: str = "", caption
         Densities per µm, so that each distribution has an area of 1; a line at each mean and a
         band over its 95 % interval.
     """
-    ax = new_axes(ax)
+    ax = draw_sizes(sizes, new_axes(ax))
+    ax.set_xlabel("equivalent diameter (µm)")
+    add_title(ax, title)
+    band = (
+        "Lines: means; bands: their 95 % intervals."
+        if np.isfinite(sizes.statistics.number_mean_diameter.low)
+        else "Too few spherulites for intervals of the means."
+    )
+    add_caption(ax, f"{describe_sizes(sizes)} {band} {caption}".strip())
+    return ax
+
+
+def draw_sizes(sizes: Sizes, ax: Axes) -> Axes:
+    """Draw the densities of the distribution alone, without a title or a caption.
+
+    Parameters
+    ----------
+    sizes : Sizes
+        The spherulites of an image.
+    ax : Axes
+        Where to draw.
+
+    Returns
+    -------
+    ax : Axes
+        As in `plot_sizes`.
+    """
     edges = class_edges(sizes)
     kind = "volume" if sizes.dimension == 3 else "area"
     if edges.size:
@@ -80,16 +110,8 @@ def plot_sizes(sizes: Sizes, *, ax: Axes | None = None, title: str = "", caption
     else:
         ax.text(0.5, 0.5, "no spherulite", transform=ax.transAxes, ha="center")
     ax.set_xlim(left=0)
-    ax.set_xlabel("equivalent diameter (µm)")
     ax.set_ylabel("density of the distribution (1/µm)")
     ax.spines[["top", "right"]].set_visible(False)
-    add_title(ax, title)
-    band = (
-        "Lines: means; bands: their 95 % intervals."
-        if np.isfinite(sizes.statistics.number_mean_diameter.low)
-        else "Too few spherulites for intervals of the means."
-    )
-    add_caption(ax, f"{describe_sizes(sizes)} {band} {caption}".strip())
     return ax
 
 
