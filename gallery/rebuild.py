@@ -7,6 +7,8 @@ belong in the gallery are copied here under the name of the settings.
 from __future__ import annotations
 
 import shutil
+import subprocess
+import sys
 import tempfile
 from pathlib import Path
 from typing import Final
@@ -28,6 +30,11 @@ PICTURES: Final = {
     "film": ("map",),
     "incomplete-quench": ("map",),
 }
+# series in configs/series/ -> pictures that are kept
+SERIES: Final = {
+    "cooling-rates": ("against-rate", "maps"),
+    "doses": ("against-dose",),
+}
 MATERIALS: Final = ("isotactic-polypropylene-alpha", "poly-l-lactide")
 
 
@@ -37,6 +44,13 @@ def main() -> None:
         for name, kinds in PICTURES.items():
             run = Path(folder) / name
             spheru.save_run(spheru.grow(spheru.read_settings(CONFIGS / f"{name}.toml")), run)
+            for kind in kinds:
+                shutil.copyfile(run / f"{kind}.png", HERE / f"{name}-{kind}.png")
+        for name, kinds in SERIES.items():
+            run = Path(folder) / name
+            settings = CONFIGS / "series" / f"{name}.toml"
+            command = [sys.executable, "-m", "spheru", "series", settings, "-o", run]
+            subprocess.run(command, check=True)  # noqa: S603 (our own program)
             for kind in kinds:
                 shutil.copyfile(run / f"{kind}.png", HERE / f"{name}-{kind}.png")
     for name in MATERIALS:

@@ -6,7 +6,7 @@ Every fault of a table is collected; none is raised here.
 from __future__ import annotations
 
 import types
-from typing import TYPE_CHECKING, Annotated, Any, Union, get_args, get_origin
+from typing import TYPE_CHECKING, Annotated, Any, Self, Union, get_args, get_origin
 
 from pydantic import BaseModel, Tag, ValidationError
 
@@ -105,8 +105,8 @@ class Collecting:
     def __init__(self, faults: list[Fault], where: str) -> None:
         self.faults, self.where = faults, where
 
-    def __enter__(self) -> None:
-        pass
+    def __enter__(self) -> Self:
+        return self
 
     def __exit__(self, kind: object, fault: object, trace: object) -> bool:
         if not isinstance(fault, InputFault):

@@ -80,8 +80,11 @@ def say():
         Path(os.environ["SPHERU_BENCH"]).write_text("\n".join(lines), encoding="utf-8")
 
 
-def row(say, name, births, frame, *, period_z=None, arrival=False, **others):
-    """One line of the table; returns the time on one thread and those of the other works."""
+def check_row(say, name, births, frame, *, period_z=None, arrival=False, **others):
+    """One line of the table; returns the time on one thread and those of the other works.
+
+    Every pixel must be owned, and on two threads by the same births as on one.
+    """
     labels = exact._memory(None, frame.shape, np.uint32)
     times = exact._memory(None, frame.shape, np.float32)
 
@@ -92,6 +95,12 @@ def row(say, name, births, frame, *, period_z=None, arrival=False, **others):
             with kernel_threads(threads) as count:
                 exact._keep_owners(births, labels, count)
 
+    grow(1)
+    alone = labels.copy()
+    grow(2)
+    assert labels.min() > 0
+    assert np.array_equal(labels, alone)
+    del alone
     found = seconds(fill=lambda: labels.fill(7), one=lambda: grow(1), two=lambda: grow(2), **others)
     (fill, _), (one, wide_one), (two, wide_two) = (found.pop(k) for k in ("fill", "one", "two"))
     say(
@@ -128,7 +137,7 @@ def test_against_the_distance_transform(shape, size, say, request):
         nearest = distance_transform_edt(seeds == 0, return_distances=False, return_indices=True)
         expected[...] = seeds[tuple(nearest)]
 
-    one, found = row(say, request.node.callspec.id, births, frame, transform=transform)
+    one, found = check_row(say, request.node.callspec.id, births, frame, transform=transform)
     taken, wide = found["transform"]
     say(f"    distance transform with gather {taken:.2f} s ({wide:.2f}) = {taken / one:.1f} times")
     labels = tessellate(births, frame).labels
@@ -147,22 +156,22 @@ def test_large_block(size, late, say):
     shape = (512,) * 3
     births = births_in(shape, round(512**3 / size**3), late=late * size)
     frame = Frame(shape=shape, pixel=1.0, periodic=True)
-    row(say, f"512^3 at {size} px, late {late:g}", births, frame)
+    check_row(say, f"512^3 at {size} px, late {late:g}", births, frame)
 
 
 @pytest.mark.parametrize("late", [0.0, 88.0], ids=["born together", "born over one size"])
 def test_section_of_a_large_body(late, say):
     births = births_in((4096,) * 3, 100_000, late=late)
     frame = Frame(shape=(4096, 4096), pixel=1.0, periodic=True, plane_z=2048.0)
-    row(say, f"4096^2 of 4096^3, 1e5, late {late:g}", births, frame, period_z=4096.0)
+    check_row(say, f"4096^2 of 4096^3, 1e5, late {late:g}", births, frame, period_z=4096.0)
 
 
 def test_arrival_map(say):
     shape = (256,) * 3
     births = births_in(shape, 256**3 // 24**3, late=24.0)
     frame = Frame(shape=shape, pixel=1.0, periodic=True)
-    plain, _ = row(say, "256^3 at 24 px, late 1", births, frame)
-    mapped, _ = row(say, "256^3 at 24 px, with arrival", births, frame, arrival=True)
+    plain, _ = check_row(say, "256^3 at 24 px, late 1", births, frame)
+    mapped, _ = check_row(say, "256^3 at 24 px, with arrival", births, frame, arrival=True)
     say(f"    the arrival map costs {mapped / plain:.2f} times as much as the labels alone")
 
 
@@ -171,7 +180,7 @@ def test_growth_of_cost_with_voxels(say):
     for side in sides:
         births = births_in((side,) * 3, round(side**3 / 11**3), late=11.0)
         frame = Frame(shape=(side,) * 3, pixel=1.0, periodic=True)
-        times.append(row(say, f"{side}^3 at 11 px, late 1", births, frame)[0])
+        times.append(check_row(say, f"{side}^3 at 11 px, late 1", births, frame)[0])
     exponents(say, "over voxels 64^3 to 512^3 at 11 px", [side**3 for side in sides], times)
 
 
@@ -180,7 +189,7 @@ def test_growth_of_cost_with_nuclei(say):
     for n in numbers:
         births = births_in((256,) * 3, n, late=256 / n ** (1 / 3))
         frame = Frame(shape=(256,) * 3, pixel=1.0, periodic=True)
-        times.append(row(say, f"256^3, {n} nuclei, late 1", births, frame)[0])
+        times.append(check_row(say, f"256^3, {n} nuclei, late 1", births, frame)[0])
     exponents(say, "over nuclei 1e3 to 1e6 in 256^3", numbers, times)
 
 
