@@ -242,18 +242,27 @@ def section_matrix(edges: ArrayLike) -> NDArray[np.float64]:
     return np.asarray(heights[:-1] - heights[1:])
 
 
-def unfold_spheres(diameters: ArrayLike, *, area: float, edges: ArrayLike) -> Unfolding:
+def unfold_spheres(
+    diameters: ArrayLike,
+    *,
+    edges: ArrayLike,
+    area: float | None = None,
+    weights: ArrayLike | None = None,
+) -> Unfolding:
     """Return the spheres per volume behind the circles of a section, after Schwartz and Saltykov.
 
     Parameters
     ----------
     diameters : array_like of float, shape (n,)
         Diameters of the circles [m].
-    area : float
-        Area of the section on which they were counted [m2], > 0.
     edges : array_like of float, shape (m + 1,)
         Class edges, `linear_edges` or `logarithmic_edges` [m]; the last one is the diameter of the
         largest sphere.
+    area : float, optional
+        Area of the section on which they were counted [m2], > 0.
+    weights : array_like of float, shape (n,), optional
+        Instead of the area: how many circles per area each one stands for [m-2], as an edge rule
+        has it; all equal to 1/area where all count alike.
 
     Returns
     -------
@@ -263,8 +272,8 @@ def unfold_spheres(diameters: ArrayLike, *, area: float, edges: ArrayLike) -> Un
     Raises
     ------
     ValidityError
-        If the edges do not rise, a circle is larger than the largest class, or the area is not
-        above 0.
+        If the edges do not rise, a circle is larger than the largest class, the area is not above
+        0, or not just one of area and weights is given.
 
     Notes
     -----
@@ -283,22 +292,29 @@ def unfold_spheres(diameters: ArrayLike, *, area: float, edges: ArrayLike) -> Un
     >>> found.per_volume.round(3).tolist()
     [0.0, 1.0]
     """
-    _require_area(area)
+    if (area is None) == (weights is None):
+        raise ValidityError("unfolding: expected either the area of the section or weights")
     matrix = section_matrix(edges)
     edge = np.asarray(edges, dtype=np.float64)
     circle = np.asarray(diameters, dtype=np.float64)
+    if area is not None:
+        _require_area(area)
+        weights = np.full(circle.shape, 1.0 / area)
+    weight = np.asarray(weights, dtype=np.float64)
     if circle.size and not circle.max() <= edge[-1] * (1.0 + 1e-12):
         raise ValidityError(
             f"unfolding: a circle of {circle.max():.6g} m is larger than the largest class, "
             f"{edge[-1]:.6g} m"
         )
-    number = np.histogram(np.minimum(circle, edge[-1]), edge)[0]
+    inside = np.minimum(circle, edge[-1])
+    per_area = np.histogram(inside, edge, weights=weight)[0]
+    variance = np.histogram(inside, edge, weights=weight**2)[0]
     inverse = np.linalg.inv(matrix)
     return Unfolding(
         edges=edge,
-        per_area=number / area,
-        per_volume=inverse @ (number / area),
-        error=np.sqrt(inverse**2 @ number) / area,
+        per_area=per_area,
+        per_volume=inverse @ per_area,
+        error=np.sqrt(inverse**2 @ variance),
         condition=float(np.linalg.cond(matrix)),
     )
 

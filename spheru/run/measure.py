@@ -21,7 +21,13 @@ from spheru.measure.largest import LargestGrain, largest_grain
 from spheru.measure.planimetric import PlanimetricCount, count_grains
 from spheru.measure.shapes import Shapes, measure_shapes
 from spheru.measure.sizes import EdgeRule, Kind, Sizes, Weighting, pool_sizes, sizes_of_sums
-from spheru.measure.stereology import SpaceEstimate, space_from_intercept
+from spheru.measure.stereology import (
+    SpaceEstimate,
+    Unfolding,
+    linear_edges,
+    space_from_intercept,
+    unfold_spheres,
+)
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Mapping, Sequence
@@ -37,6 +43,8 @@ _NOISE: Final = 8.0  # pixels a patch on the mean: fewer, and each label in many
 _MANY: Final = 20.0  # patches a label
 _COARSE: Final = 10.0  # pixels across the mean spherulite below which shapes say little
 _WIDE: Final = 0.2  # width of an interval by its mean
+_APART: Final = 0.5  # share of the picture that spheres hardly touching fill at most
+_CLASSES: Final = 8  # of the unfolding: more make it noise
 _FULL: Final = (
     0.9  # share of a picture with labels from which on it shows a space-filling structure
 )
@@ -93,6 +101,9 @@ class Measurement:
     body : tuple of SpaceEstimate
         What a plane section tells of the body, for each structure, from the mean intercept; none
         for a body, and where labels leave more than a tenth of the picture free.
+    spheres : Unfolding or None
+        Spheres per volume behind the picture if it is a section through spheres that hardly touch,
+        after Schwartz and Saltykov; none for a body, and where labels fill more than half of it.
     summary : mapping
         Headline numbers, the unit in every key (measure.json).
     warnings : tuple of str
@@ -106,6 +117,7 @@ class Measurement:
     intercepts: InterceptCount | None
     largest: LargestGrain | None
     body: tuple[SpaceEstimate, ...]
+    spheres: Unfolding | None
     summary: Mapping[str, Any] = field(default_factory=dict)
     warnings: tuple[str, ...] = ()
 
@@ -180,6 +192,7 @@ def measure_images(
     )
     planimetric = intercepts = largest = None
     body: tuple[SpaceEstimate, ...] = ()
+    spheres = None
     if sizes.dimension == 2:
         tell("test areas and lines", 0.8)
         seen = [one.image for one in fields]
@@ -194,6 +207,11 @@ def measure_images(
                 space_from_intercept(mean, "voronoi"),
                 space_from_intercept(mean, "johnson-mehl"),
             )
+        used = sizes.weight > 0
+        if _share(fields) < _APART and used.any():
+            circles = sizes.diameter[used]
+            edges_of_classes = linear_edges(float(circles.max()), _CLASSES)
+            spheres = unfold_spheres(circles, edges=edges_of_classes, weights=sizes.weight[used])
     warnings = _warnings(fields, sizes, planimetric)
     tell("done", 1.0)
     found = Measurement(
@@ -204,6 +222,7 @@ def measure_images(
         intercepts=intercepts,
         largest=largest,
         body=body,
+        spheres=spheres,
         warnings=warnings,
     )
     return Measurement(
@@ -440,7 +459,23 @@ def _counts(found: Measurement) -> dict[str, Any]:
         }
         for one in found.body
     ]
+    numbers["spheres_if_this_is_a_section_through_them"] = _spheres(found.spheres)
     return numbers
+
+
+def _spheres(found: Unfolding | None) -> dict[str, Any] | None:
+    if found is None:
+        return None
+    return {
+        "manner": "Schwartz and Saltykov, linear classes",
+        "class_edges_um": [edge * 1e6 for edge in found.edges],
+        "circles_per_mm2": [number * 1e-6 for number in found.per_area],
+        "spheres_per_mm3": [number * 1e-9 for number in found.per_volume],
+        "standard_error_per_mm3": [number * 1e-9 for number in found.error],
+        "number_density_per_mm3": found.number_density * 1e-9,
+        "condition_number": found.condition,
+        "warning": found.warning,
+    }
 
 
 def _interval_source(found: Measurement) -> str:

@@ -119,3 +119,18 @@ def test_bad_input_gets_one_clear_line():
         logarithmic_edges(0.0)
     with pytest.raises(ValidityError, match="between 0 and 1"):
         logarithmic_edges(1.0, ratio=1.0)
+
+
+def test_weights_that_all_equal_one_over_the_area_give_what_the_area_gives():
+    circles = np.random.default_rng(3).uniform(0.1, 2.0, 500)
+    edges = linear_edges(2.0, 6)
+    by_area = unfold_spheres(circles, edges=edges, area=40.0)
+    by_weight = unfold_spheres(circles, edges=edges, weights=np.full(500, 1 / 40.0))
+    np.testing.assert_allclose(by_weight.per_volume, by_area.per_volume, rtol=1e-12)
+    np.testing.assert_allclose(by_weight.error, by_area.error, rtol=1e-12)
+
+
+@pytest.mark.parametrize("both", [{}, {"area": 1.0, "weights": [1.0]}], ids=["none", "both"])
+def test_area_or_weights_not_both(both):
+    with pytest.raises(ValidityError, match="either the area of the section or weights"):
+        unfold_spheres([0.5], edges=[0.0, 1.0], **both)

@@ -196,3 +196,34 @@ def test_planes_and_bodies_do_not_mix():
         measure_images([plane, body])
     with pytest.raises(ValidityError, match="at least one"):
         measure_images([])
+
+
+def test_circles_apart_are_unfolded_into_spheres():
+    # spheres of diameter 20 at 1 per 40^3: 20/40^3 circles per area, at random heights
+    random = np.random.default_rng(11)
+    side, diameter, spacing = 1200, 20.0, 40.0
+    labels = np.zeros((side, side), np.uint32)
+    y, x = np.ogrid[:side, :side]
+    count = random.poisson(side**2 * diameter / spacing**3)
+    for k in range(count):
+        radius = np.sqrt(diameter**2 / 4 - random.uniform(-diameter / 2, diameter / 2) ** 2)
+        cy, cx = random.uniform(0, side, 2)
+        lo = [slice(max(int(c - 12), 0), int(c + 13)) for c in (cy, cx)]
+        disc = (y[lo[0]] + 0.5 - cy) ** 2 + (x[:, lo[1]] + 0.5 - cx) ** 2 <= radius**2
+        labels[tuple(lo)][disc] = k + 1
+    image = LabelImage(labels=labels, frame=Frame(shape=labels.shape, pixel=1e-6))
+    found = measure_images(image)
+    spheres = found.spheres
+    # circles hide others and some are smaller than a pixel: a tenth is allowed beside 4 errors
+    expected = 1 / (spacing * 1e-6) ** 3
+    error = float(np.sqrt((spheres.error**2).sum()))
+    assert abs(spheres.number_density - expected) < 4 * error + 0.1 * expected
+    assert spheres.per_volume.argmax() == len(spheres.per_volume) - 1
+    shown = found.summary["spheres_if_this_is_a_section_through_them"]
+    assert "ill-conditioned" in shown["warning"]
+
+
+def test_a_full_picture_is_not_unfolded_into_spheres():
+    labels = np.arange(1, 101, dtype=np.uint32).reshape(10, 10).repeat(12, 0).repeat(12, 1)
+    image = LabelImage(labels=labels, frame=Frame(shape=labels.shape, pixel=1e-6, periodic=True))
+    assert measure_images(image).spheres is None
