@@ -32,6 +32,7 @@ _ROWS: Final = {
     "diameter_of_mean_volume_um": ("diameter of the mean volume", "um"),
     "boundary_density_per_mm": ("boundary density", "1/mm"),
     "mean_intercept_um": ("mean intercept in 3D", "um"),
+    "triple_line_density_per_mm2": ("length of triple lines, per volume", "1/mm^2"),
     "fraction_transformed": ("transformed fraction", ""),
     "crystallinity": ("crystallinity by mass", ""),
     "onset_temperature_C": ("onset temperature", "degC"),

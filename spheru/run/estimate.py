@@ -161,6 +161,8 @@ def _structure_numbers(sample: Sample, found: Kinetics) -> dict[str, Any]:
             "boundary_density_per_mm": shown * 1e-3,
             "mean_intercept_um": intercept * 1e6 if final > _WHOLE else None,
         }
+        if bulk.triple_line_density is not None:
+            numbers["triple_line_density_per_mm2"] = bulk.triple_line_density * 1e-6
     return numbers
 
 

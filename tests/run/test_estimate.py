@@ -28,6 +28,9 @@ def test_numbers_of_a_section_belong_together():
     assert numbers["mean_intercept_um"] == pytest.approx(2e3 / surface)
     area = math.pi / 4 * numbers["diameter_of_mean_area_um"] ** 2
     assert numbers["section_count_per_mm2"] == pytest.approx(1e6 / area)
+    # by Euler a section has a quarter as many cells as the length of triple lines, N_A = L_V/4
+    lines = numbers["triple_line_density_per_mm2"]
+    assert numbers["section_count_per_mm2"] == pytest.approx(lines / 4)
     volume = math.pi / 6 * numbers["diameter_of_mean_volume_um"] ** 3
     assert numbers["number_density_per_mm3"] == pytest.approx(1e9 / volume)
 
